@@ -95,19 +95,19 @@ def exact_t_unequal(
 
 @source("two-port theory", "V1 = A V2 + B I2 of a T", "derived here")
 def chain_a(z_from: Any, y_m: Any) -> Any:
-    """A of the T from the from to the to terminals: the no-load ratio V1/V2 [pu]."""
+    """No-load ratio V1/V2 of the T [pu]: its A."""
     return 1 + z_from * y_m
 
 
 @source("two-port theory", "V1 = A V2 + B I2 of a T", "derived here")
 def chain_b(z_from: Any, z_to: Any, y_m: Any) -> Any:
-    """B of the T [pu]."""
+    """Transfer impedance of the T [pu]: its B."""
     return z_from + z_to + z_from * z_to * y_m
 
 
 @source("definition", "z_base = U²/S", "derived here")
 def base_impedance(u: Any, s: Any) -> Any:
-    """Base impedance per phase of the equivalent star [ohm] from volts [V] and power [VA]."""
+    """Ohms of one per unit, per phase of the equivalent star, from volts [V] and power [VA]."""
     return u**2 / s
 
 

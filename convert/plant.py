@@ -74,8 +74,8 @@ class Table:
     def has(self, column: str) -> Mask:
         """Return (n,) bool: which rows hold a value in this column."""
         if column not in self.values:
-            return np.zeros(self.n, dtype=bool)
-        return self.status[column] != Status.ABSENT
+            return np.zeros(self.n, dtype=np.bool_)
+        return np.not_equal(self.status[column], int(Status.ABSENT))
 
     def word(self, column: str) -> NDArray[np.object_]:
         """Return (n,) text of a column, empty where the column or the cell is absent."""
@@ -136,20 +136,21 @@ class Table:
 
     def take(self, rows: NDArray[np.intp]) -> Table:
         """Return a new table of these rows, in this order."""
-        pick = lambda columns: {name: column[rows] for name, column in columns.items()}  # noqa: E731
         return Table(
             len(rows),
-            pick(self.values),
-            pick(self.status),
-            pick(self.line),
-            pick(self.half_digit),
-            pick(self.text),
+            {name: column[rows] for name, column in self.values.items()},
+            {name: column[rows] for name, column in self.status.items()},
+            {name: column[rows] for name, column in self.line.items()},
+            {name: column[rows] for name, column in self.half_digit.items()},
+            {name: column[rows] for name, column in self.text.items()},
             dict(self.steps),
         )
 
     def worst(self, columns: Iterable[str]) -> NDArray[np.uint8]:
         """Return (n,) uint8: the worst status over the named columns."""
-        return np.maximum.reduce([self.status[column] for column in columns])
+        stacked = np.array([self.status[column] for column in columns], dtype=np.uint8)
+        worst: NDArray[np.uint8] = stacked.max(axis=0)
+        return worst
 
 
 @dataclass(frozen=True)

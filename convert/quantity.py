@@ -28,12 +28,24 @@ FAMILIES: dict[str, tuple[tuple[str, ...], str, str]] = {
     "temperature": (("°C", "degC"), "75 °C", "a temperature"),
     "ratio": (("%", "pu"), "9.85 %", "a ratio in % or pu"),
 }
-_PREFIXES = ("milli- = 1e-3 = m-", "micro- = 1e-6 = µ-", "kilo- = 1e3 = k-", "mega- = 1e6 = M-",
-             "giga- = 1e9 = G-")  # fmt: skip
-_UNITS = ("volt = [voltage] = V", "ampere = [current] = A", "watt = [active_power] = W",
-          "volt_ampere = [apparent_power] = VA", "ohm = [resistance] = Ω",
-          "hertz = [frequency] = Hz", "celsius = [temperature] = °C = degC",
-          "per_unit = [ratio] = pu", "percent = 0.01 * per_unit = %")  # fmt: skip
+_DEFINITIONS = """
+milli- = 1e-3 = m-
+micro- = 1e-6 = u-
+kilo- = 1e3 = k-
+mega- = 1e6 = M-
+giga- = 1e9 = G-
+volt = [voltage] = V
+ampere = [current] = A
+watt = [active_power] = W
+volt_ampere = [apparent_power] = VA
+ohm = [resistance]
+hertz = [frequency] = Hz
+degC = [temperature]
+pu = [ratio]
+percent = 0.01 * pu
+"""
+#: pint rewrites these signs before it looks a unit up; it is given plain letters instead
+_PLAIN = str.maketrans({"Ω": "ohm", "µ": "u", "°": "deg", "%": "percent"})
 NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
 ROOT_THREE = r"\s*/\s*(?:√\s*3|sqrt\(3\))"
 _TEXT = re.compile(rf"({NUMBER})({ROOT_THREE})?\s*([^\s\d.,+\-/*^()]*)")
@@ -64,15 +76,16 @@ def _registry() -> Any:
     import pint
 
     registry: Any = pint.UnitRegistry(None)
-    for line in _PREFIXES + _UNITS:
-        registry.define(line)
+    for line in _DEFINITIONS.split("\n"):
+        if line:
+            registry.define(line)
     return registry
 
 
 @cache
 def factor(word: str) -> float:
     """Return the SI value of one `word` (kV -> 1000.0); the word must stand in FAMILIES."""
-    return float(_registry().Quantity(1.0, word).to_base_units().magnitude)
+    return float(_registry().Quantity(1.0, word.translate(_PLAIN)).to_base_units().magnitude)
 
 
 def expectation(dimension: str) -> str:
