@@ -127,3 +127,62 @@ def core_resistance(y_m: Any, z_base: Any) -> Any:
 def magnetising_reactance(y_m: Any, z_base: Any) -> Any:
     """Xm [ohm per phase of the equivalent star]."""
     return z_base / abs(y_m.imag)
+
+
+@source("two-port theory", "I1 = C V2 + D I2 of a T", "derived here")
+def chain_d(z_to: Any, y_m: Any) -> Any:
+    """Current ratio I1/I2 of the T with its far side shorted [pu]: its D (its C is `y_m`)."""
+    return 1 + z_to * y_m
+
+
+@source("two-port theory", "|V1| for V2 = 1 and a load current", "derived here")
+def from_volts(a: Any, b: Any, load: Any) -> Any:
+    """From-side volts [pu] that give 1 pu at the load, which draws the current `load` [pu]."""
+    return abs(a + b * load)
+
+
+@source("two-port theory", "P1 - P2 for V2 = 1 and a load current", "derived here")
+def loss(a: Any, b: Any, c: Any, d: Any, load: Any) -> Any:
+    """Loss [pu] of a two-port with 1 pu at the load, which draws the current `load` [pu]."""
+    v = a + b * load
+    i = c + d * load
+    return v.real * i.real + v.imag * i.imag - load.real
+
+
+@source("definition", "simple/exact - 1", "derived here")
+def error(simple: Any, exact: Any) -> Any:
+    """Relative error of a simpler circuit's value."""
+    return simple / exact - 1
+
+
+@source("two-port theory", "no-load volts of the far side", "derived here")
+def open_volts(u: Any, u_fed: Any, u_open: Any, z_fed: Any, y_m: Any) -> Any:
+    """Volts of the open side [V] when volts `u` feed the side whose leg is `z_fed`.
+
+    `u_fed`, `u_open`: rated volts of the two sides.
+    """
+    return u * (u_open / u_fed) / abs(1 + z_fed * y_m)
+
+
+@source("Ohm's law", "U = |z| I on the fed side's base", "derived here")
+def test_volts(z: Any, i: Any, i_r: Any, u_r: Any) -> Any:
+    """Volts [V] that drive amps `i` through the impedance `z` [pu], far side shorted."""
+    return abs(z) * (i / i_r) * u_r
+
+
+@source("Joule's law", "P = r I² on the unit's base", "derived here")
+def test_watts(z: Any, i: Any, i_r: Any, s: Any) -> Any:
+    """Watts [W] that amps `i` lose in the impedance `z` [pu], far side shorted."""
+    return z.real * (i / i_r) ** 2 * s
+
+
+@source("Ohm's law", "I = |y| U on the fed side's base", "derived here")
+def test_amps(y: Any, u: Any, u_r: Any, i_r: Any) -> Any:
+    """Amps [A] that volts `u` drive through the admittance `y` [pu], far side open."""
+    return abs(y) * (u / u_r) * i_r
+
+
+@source("Joule's law", "P = g U² on the unit's base", "derived here")
+def no_load_watts(y: Any, u: Any, u_r: Any, s: Any) -> Any:
+    """Watts [W] that volts `u` lose in the admittance `y` [pu], far side open."""
+    return y.real * (u / u_r) ** 2 * s

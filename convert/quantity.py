@@ -143,10 +143,7 @@ def last_digit(number: str) -> float:
 
 def _mend_number(text: str, words: tuple[str, ...]) -> str:
     if _COMMA.match(text):
-        return (
-            "write a decimal point, not a comma, and no thousands separator: "
-            f"{text.split()[0].replace(',', '.', 1)} {words[0]} or 12500 {words[0]}"
-        )
+        return f"write a decimal point, {text.replace(',', '.', 1)}, and no thousands separator"
     if _SPACED.search(text):
         return "write the number without spaces between its digits"
     if text.lower().lstrip("+-.") in {"nan", "inf", "infinity"}:

@@ -222,7 +222,9 @@ def _type(document: Document, place: Place, error: Any) -> None:
 
 def _enum(document: Document, place: Place, error: Any) -> None:
     words = [str(word) for word in error.validator_value]
-    near = get_close_matches(str(error.instance), words, 1, 0.6)
+    given = str(error.instance)
+    near = [w for w in words if w.lower() == given.lower()]
+    near = near or get_close_matches(given, words, 1, 0.6)
     mend = f"did you mean {near[0]}?" if near else ""
     document.report(place, _what(error.instance), "one of " + ", ".join(words), mend)
 

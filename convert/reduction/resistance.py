@@ -27,3 +27,9 @@ def resistance_at_temperature(r: Any, t: Any, t_new: Any, k: Any) -> Any:
 def ohmic_loss(i_r: Any, r: Any, phases: Any) -> Any:
     """I²R loss of one side at rated current [W] from ohms per phase of the equivalent star."""
     return phases * i_r**2 * r
+
+
+@source("definition", "share of the I²R loss at rated current", "derived here")
+def share_of_loss(p: Any, p_other: Any) -> Any:
+    """Share of one side in the series resistance [1], by both sides' I²R loss [W]."""
+    return p / (p + p_other)

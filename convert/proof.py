@@ -1,0 +1,568 @@
+"""Load flows on the written files, held against the hand regulation and the certificate.
+
+The proof knows the network files, what branches.csv and units.csv say, and what was expected; it
+turns the library's results into volts, amps and watts itself. pandapower is imported when a
+network is solved, not before.
+"""
+
+from __future__ import annotations
+
+import copy
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import pandas as pd
+
+from . import entries
+from .errors import Finding, Severity
+
+if TYPE_CHECKING:
+    from pandas import DataFrame
+
+FILES = ("network.json", "single_phase.json")
+#: a re-run reading may differ from the expected one by this share of it
+TOLERANCE = 1e-8
+#: an angle is compared in shares of a full turn
+FULL_TURN = 360.0
+#: the library takes this per unit on the network's own power; its own floor lies at about 1e-13
+_FLOW_TOLERANCE_MVA = 1e-12
+_MOST_ISLANDS = 3000
+_FED_PU, _SHORTED_PU = 0.05, 1e-15
+KEYS = ["name", "state", "test", "quantity"]
+
+
+@dataclass(frozen=True)
+class Rows:
+    """Transformer rows read back from a file: each with its two buses' names and kV.
+
+    trafo has n rows; kv, names are (n, 2) for the HV and the LV bus; amp_factor is sqrt(3) for
+    single-phase units, whose file says so.
+    """
+
+    trafo: DataFrame
+    kv: np.ndarray[Any, Any]
+    names: np.ndarray[Any, Any]
+    amp_factor: np.ndarray[Any, Any]
+
+    def take(self, at: Any) -> Rows:
+        """Return the rows at these positions."""
+        trafo = self.trafo.iloc[at].reset_index(drop=True)
+        return Rows(trafo, self.kv[at], self.names[at], self.amp_factor[at])
+
+
+@dataclass(frozen=True)
+class Flow:
+    """Results of one load flow a row, NaN where it found none: (n, 2) for HV and LV.
+
+    vm [pu], va [deg] at the buses; p [MW], q [Mvar], i [kA] into the transformer.
+    """
+
+    vm: np.ndarray[Any, Any]
+    va: np.ndarray[Any, Any]
+    p: np.ndarray[Any, Any]
+    i: np.ndarray[Any, Any]
+
+
+def prove(
+    folder: Path,
+    branches: DataFrame,
+    units: DataFrame,
+    retest: DataFrame,
+    regulation: DataFrame,
+    progress: Callable[[str], None] = lambda _: None,
+) -> tuple[DataFrame, DataFrame, list[Finding]]:
+    """Run the proof on the network files of a folder.
+
+    Parameters
+    ----------
+    folder : Path
+        Holds network.json, single_phase.json or both, as written.
+    branches, units : DataFrame
+        Contents of branches.csv and units.csv (states `tested` and `study`).
+    retest, regulation : DataFrame
+        Their expected columns: see `expectation`.
+    progress : callable
+        Told what is being solved.
+
+    Returns
+    -------
+    retest, regulation : DataFrame
+        The same rows with what the load flow gave, the difference and the verdict.
+    findings : list of Finding
+        An error for each unit whose proof failed, naming the worst quantity.
+    """
+    networks = {name: read_network(folder / name) for name in FILES if (folder / name).exists()}
+    study = _study_rows(networks, branches)
+    tested = _tested_rows(branches, units)
+    found: list[DataFrame] = []
+    for state, rows in (("tested", tested), ("study", study)):
+        progress(f"re-running the tests, {state} state")
+        mine = retest[retest["state"] == state]
+        found.append(_rerun_open_circuit(rows, mine))
+        found.append(_rerun_short_circuit(rows, mine))
+    progress("regulation and phase shift")
+    found.append(_connection(study, retest))
+    found.append(_angles(study))
+    retested = _compare(retest, pd.concat(found, ignore_index=True), branches)
+    retested = pd.concat([retested, _plain_flows(networks)], ignore_index=True)
+    regulated = _regulation(study, branches, regulation)
+    return retested, regulated, _failures(retested, regulated)
+
+
+def read_network(path: Path) -> Any:
+    """Load a network file with pandapower."""
+    import pandapower as pp
+
+    return pp.from_json(str(path))
+
+
+def _study_rows(networks: dict[str, Any], branches: DataFrame) -> Rows:
+    """Collect the rows of all files in the order of the branches; a missing one is all NaN."""
+    parts = []
+    for file, net in networks.items():
+        trafo = net.trafo.copy()
+        ends = [net.bus.reindex(trafo[f"{side}_bus"]) for side in ("hv", "lv")]
+        trafo["_hv_name"], trafo["_lv_name"] = (end["name"].to_numpy() for end in ends)
+        trafo["_hv_kv"], trafo["_lv_kv"] = (end["vn_kv"].to_numpy() for end in ends)
+        trafo["_factor"] = np.sqrt(3.0) if file == FILES[1] else 1.0
+        parts.append(trafo)
+    everything = pd.concat(parts, ignore_index=True)
+    once = everything[~everything["name"].duplicated(keep=False)]
+    ordered = once.set_index("name", drop=False)
+    ordered = ordered[ordered.index.isin(branches["name"])]
+    order = pd.Index(branches["name"])
+    ordered = ordered.loc[order[order.isin(ordered.index)]].reset_index(drop=True)
+    return Rows(
+        ordered.drop(columns=["_hv_name", "_lv_name", "_hv_kv", "_lv_kv", "_factor"]),
+        ordered[["_hv_kv", "_lv_kv"]].to_numpy(dtype=float),
+        ordered[["_hv_name", "_lv_name"]].to_numpy(dtype=object),
+        ordered["_factor"].to_numpy(dtype=float),
+    )
+
+
+def _tested_rows(branches: DataFrame, units: DataFrame) -> Rows:
+    """Build each unit's row at its test's own temperature, write it and read it back."""
+    import pandapower as pp
+
+    wide = branches.merge(units[units["state"] == "tested"], on=["name", "rated_mva"], how="left",
+                          suffixes=("_branch", ""))  # fmt: skip
+    wide = wide.drop_duplicates("name")
+    n = len(wide)
+    column = {name: wide[name].to_numpy() for name in wide.columns}
+    own = {
+        **column,
+        "hv_bus": np.arange(n),
+        "lv_bus": np.arange(n, 2 * n),
+        "z": column["r_pu"] + 1j * column["x_pu"],
+        "y": column["g_pu"] + 1j * column["b_pu"],
+    }
+    volts = np.concatenate([column["base_kv_from"], column["base_kv_to"]]) * 1e3
+    network = entries.Network(
+        "tested", "", 1.0, 50.0, entries.buses(np.repeat(column["name"], 2), volts),
+        entries.trafo_rows(own), entries.sources(np.full(2 * n, np.nan), volts),
+    )  # fmt: skip
+    net = pp.from_json_string(entries.network_text(network))
+    return Rows(
+        net.trafo,
+        np.stack([column["base_kv_from"], column["base_kv_to"]], axis=1),
+        np.stack([column["from_busbar"], column["to_busbar"]], axis=1),
+        np.where(column["phases"] == 1, np.sqrt(3.0), 1.0),
+    )
+
+
+def solve(
+    rows: Rows,
+    source: np.ndarray[Any, Any],
+    shunt: np.ndarray[Any, Any] | None = None,
+    current: np.ndarray[Any, Any] | None = None,
+    angles: bool = False,
+    near_rated: bool = True,
+) -> Flow:
+    """Solve each row as an island of its own, many islands a network.
+
+    Parameters
+    ----------
+    rows : Rows
+        n transformers.
+    source : (n, 2) float
+        Source volts at the HV and LV bus [pu of the bus], NaN for none.
+    shunt, current : (n,) complex, optional
+        Load at the LV bus [MVA, at its rated volts and its nominal volts]: constant impedance,
+        or constant current.
+    angles : bool
+        Whether the transformers' phase shift is solved for.
+    near_rated : bool
+        Refuse volts outside 0.5 to 1.5 per unit: the library knows false solutions there.
+
+    Returns
+    -------
+    Flow
+        NaN for islands without a solution, or whose power does not balance.
+    """
+    n = len(rows.trafo)
+    out = Flow(*(np.full((n, 2), np.nan) for _ in range(4)))
+    rating = rows.trafo["sn_mva"].to_numpy(dtype=float)
+    with np.errstate(all="ignore"):
+        decade = np.floor(np.log10(rating))
+    for size in np.unique(decade[np.isfinite(decade)]):
+        alike = np.flatnonzero(decade == size)
+        for start in range(0, len(alike), _MOST_ISLANDS):
+            at = alike[start : start + _MOST_ISLANDS]
+            load = (None if shunt is None else shunt[at], None if current is None else current[at])
+            _solve_chunk(rows, at, source[at], load, angles, near_rated, 10.0**size, out)
+    return out
+
+
+def _solve_chunk(
+    rows: Rows,
+    at: Any,
+    source: Any,
+    load: tuple[Any, Any],
+    angles: bool,
+    near_rated: bool,
+    power: float,
+    out: Flow,
+) -> None:
+    """Solve the islands `at`; where the library finds no solution, halve until it is one unit."""
+    import pandapower as pp
+
+    net = _islands(rows.take(at), source, load, power)
+    try:
+        pp.runpp(
+            net, numba=False, check_connectivity=False, calculate_voltage_angles=angles,
+            init="dc" if angles else "flat", tolerance_mva=_FLOW_TOLERANCE_MVA, max_iteration=60,
+        )  # fmt: skip
+    except (pp.LoadflowNotConverged, FloatingPointError, ZeroDivisionError):
+        if len(at) > 1:
+            for half in (slice(0, len(at) // 2), slice(len(at) // 2, None)):
+                shunt, current = (None if part is None else part[half] for part in load)
+                _solve_chunk(
+                    rows, at[half], source[half], (shunt, current), angles, near_rated, power, out
+                )
+        return
+    n = len(at)
+    vm = net.res_bus["vm_pu"].to_numpy().reshape(2, n).T
+    good = _balanced(net, n, power)
+    if near_rated:
+        good &= ((vm > 0.5) & (vm < 1.5)).all(axis=1)
+    done = at[good]
+    out.vm[done] = vm[good]
+    out.va[done] = net.res_bus["va_degree"].to_numpy().reshape(2, n).T[good]
+    for result, name in ((out.p, "p_{}_mw"), (out.i, "i_{}_ka")):
+        columns = [net.res_trafo[name.format(side)].to_numpy() for side in ("hv", "lv")]
+        result[done] = np.stack(columns, axis=1)[good]
+
+
+def _islands(rows: Rows, source: Any, load: tuple[Any, Any], power: float) -> Any:
+    """Return a network of n islands: buses 0..n-1 are the HV, n..2n-1 the LV ones."""
+    import pandapower as pp
+
+    n = len(rows.trafo)
+    kv = rows.kv.T.reshape(-1)
+    held = source.T.reshape(-1)
+    net = pp.create_empty_network(sn_mva=power, add_stdtypes=False)
+    net.bus = _typed(net.bus, {"name": None, "vn_kv": kv, "type": "b", "in_service": True}, 2 * n)
+    at = np.flatnonzero(~np.isnan(held))
+    net.ext_grid = _typed(
+        net.ext_grid,
+        {"bus": at, "vm_pu": held[at], "va_degree": 0.0, "slack_weight": 1.0, "in_service": True},
+        len(at),
+    )
+    trafo = rows.trafo.copy()
+    trafo["hv_bus"] = np.arange(n, dtype="uint32")
+    trafo["lv_bus"] = np.arange(n, 2 * n, dtype="uint32")
+    net.trafo = trafo
+    shunt, current = load
+    lv = np.arange(n, 2 * n)
+    if shunt is not None:
+        rated = trafo["vn_lv_kv"].to_numpy()
+        columns = {"bus": lv, "p_mw": shunt.real, "q_mvar": shunt.imag, "vn_kv": rated, "step": 1,
+                   "max_step": 1, "in_service": True}  # fmt: skip
+        net.shunt = _typed(net.shunt, columns, n)
+    if current is not None:
+        share = dict.fromkeys(("const_i_p_percent", "const_i_q_percent"), 100.0)
+        none = dict.fromkeys(("const_z_p_percent", "const_z_q_percent"), 0.0)
+        columns = {"bus": lv, "p_mw": current.real, "q_mvar": current.imag, "scaling": 1.0,
+                   "in_service": True, **share, **none}  # fmt: skip
+        net.load = _typed(net.load, columns, n)
+    return net
+
+
+def _typed(empty: DataFrame, columns: dict[str, Any], n: int) -> DataFrame:
+    """Return n rows with the columns and types of a library table."""
+    table = pd.DataFrame(index=pd.RangeIndex(n))
+    for name, kind in empty.dtypes.items():
+        value = columns.get(str(name), False if kind.kind == "b" else None)
+        table[name] = pd.Series([value] * n if np.isscalar(value) or value is None else value,
+                                index=table.index).astype(kind)  # fmt: skip
+    return table
+
+
+def _balanced(net: Any, n: int, power: float) -> np.ndarray[Any, Any]:
+    """Return (n,) bool: what the sources feed into each island is what its elements take."""
+    taken = np.zeros(2 * n, dtype=complex)
+    flow = net.res_trafo
+    taken[:n] += flow["p_hv_mw"].to_numpy() + 1j * flow["q_hv_mvar"].to_numpy()
+    taken[n:] += flow["p_lv_mw"].to_numpy() + 1j * flow["q_lv_mvar"].to_numpy()
+    for name in ("shunt", "load"):
+        if len(net[name]):
+            result = net[f"res_{name}"]
+            taken[n:] += result["p_mw"].to_numpy() + 1j * result["q_mvar"].to_numpy()
+    fed = net.res_ext_grid
+    given = fed["p_mw"].to_numpy() + 1j * fed["q_mvar"].to_numpy()
+    np.subtract.at(taken, net.ext_grid["bus"].to_numpy(), given)
+    largest = np.abs(taken.reshape(2, n)).max(axis=0)
+    return np.asarray(largest < 1e-9 * power * 10, dtype=bool)
+
+
+def _wanted(rows: Rows, mine: DataFrame, test: str, drive: str) -> tuple[Any, Any]:
+    """Return the driven side (0 HV, 1 LV) and the volts or amps that drive each row's test."""
+    driven = mine[(mine["test"] == test) & mine["quantity"].str.endswith(drive)]
+    value = dict(zip(driven["name"], driven["expected"], strict=True))
+    side = dict(zip(driven["name"], driven["quantity"].str[:2], strict=True))
+    names = rows.trafo["name"]
+    return (
+        np.array([0 if side.get(name) == "hv" else 1 for name in names]),
+        np.array([value.get(name, np.nan) for name in names]),
+    )
+
+
+def _rerun_open_circuit(rows: Rows, mine: DataFrame) -> DataFrame:
+    side, volts = _wanted(rows, mine, "open circuit", "volts applied")
+    n = np.arange(len(side))
+    source = np.full((len(side), 2), np.nan)
+    source[n, side] = volts / 1e3 / rows.kv[n, side]
+    flow = solve(rows, source)
+    state = str(mine["state"].iloc[0])
+    out = _reading(rows, flow, state, "open circuit", side, "volts applied", "amps", "watts")
+    return pd.concat([out, _reading(rows, flow, state, "open circuit", 1 - side, "volts")])
+
+
+def _rerun_short_circuit(rows: Rows, mine: DataFrame) -> DataFrame:
+    """Solve with both ends held, then scale the fed volts to the test's amps and solve again."""
+    side, amps = _wanted(rows, mine, "short circuit", "amps applied")
+    n = np.arange(len(side))
+    source = np.full((len(side), 2), _SHORTED_PU)
+    source[n, side] = _FED_PU
+    flow = solve(rows, source, near_rated=False)
+    source[n, side] *= amps / (flow.i[n, side] * 1e3 * rows.amp_factor)
+    flow = solve(rows, source, near_rated=False)
+    state = str(mine["state"].iloc[0])
+    return _reading(rows, flow, state, "short circuit", side, "amps applied", "volts", "watts")
+
+
+def _reading(rows: Rows, flow: Flow, state: str, test: str, side: Any, *words: str) -> DataFrame:
+    """Volts [V], amps [A] and watts [W] of one side, as rows to compare."""
+    n = np.arange(len(side))
+    value = {
+        "volts": flow.vm[n, side] * rows.kv[n, side] * 1e3,
+        "amps": flow.i[n, side] * 1e3 * rows.amp_factor,
+        "watts": flow.p[n, side] * 1e6,
+    }
+    name = np.where(side == 0, "hv", "lv")
+    return pd.concat(
+        [
+            pd.DataFrame(
+                {
+                    "name": rows.trafo["name"].to_numpy(),
+                    "state": state,
+                    "test": test,
+                    "quantity": [f"{s} {word}" for s in name],
+                    "retest": value[word.split()[0]],
+                }
+            )
+            for word in words
+        ]
+    )
+
+
+def _connection(rows: Rows, retest: DataFrame) -> DataFrame:
+    """Nominal volts of the busbar that each side stands on; NaN if it is another busbar."""
+    parts = []
+    for at, side in enumerate(("hv", "lv")):
+        quantity = f"{side} nominal volts"
+        named = retest[retest["quantity"] == quantity].set_index("name")["certificate"]
+        names = rows.trafo["name"].to_numpy()
+        right = named.reindex(names).to_numpy() == rows.names[:, at]
+        parts.append(
+            pd.DataFrame(
+                {
+                    "name": names,
+                    "state": "study",
+                    "test": "connection",
+                    "quantity": quantity,
+                    "retest": np.where(right, rows.kv[:, at] * 1e3, np.nan),
+                }
+            )
+        )
+    return pd.concat(parts)
+
+
+def _angles(rows: Rows) -> DataFrame:
+    """LV angle at no load against the HV busbar [deg]."""
+    source = np.full((len(rows.trafo), 2), np.nan)
+    source[:, 0] = 1.0
+    flow = solve(rows, source, angles=True)
+    return pd.DataFrame(
+        {
+            "name": rows.trafo["name"].to_numpy(),
+            "state": "study",
+            "test": "phase shift",
+            "quantity": "lv angle",
+            "retest": flow.va[:, 1],
+        }
+    )
+
+
+def _compare(retest: DataFrame, found: DataFrame, branches: DataFrame) -> DataFrame:
+    """Join what was expected with what was found; the difference is always a number."""
+    joined = retest.merge(found, on=KEYS, how="left")
+    expected, got = joined["expected"].to_numpy(), joined["retest"].to_numpy()
+    scale = np.abs(expected)
+    turn = (joined["unit"] == "deg").to_numpy()
+    zero = scale == 0
+    if zero.any():
+        scale = np.where(zero, _rated(joined, branches), scale)
+    difference = got - expected
+    difference = np.where(turn, (difference + 180) % FULL_TURN - 180, difference)
+    share = difference / np.where(turn, FULL_TURN, scale)
+    joined["difference_percent"] = np.where(np.isnan(share), np.inf, 100 * share)
+    joined["verdict"] = np.where(np.abs(share) <= TOLERANCE, "pass", "fail")
+    return joined
+
+
+def _rated(joined: DataFrame, branches: DataFrame) -> Any:
+    """Rated volts, amps or watts of the side: the scale where nothing is expected."""
+    unit = branches.set_index("name").loc[joined["name"]]
+    hv = joined["quantity"].str.startswith("hv").to_numpy()
+    volts = 1e3 * np.where(hv, unit["rated_kv_from"], unit["rated_kv_to"])
+    watts = 1e6 * unit["rated_mva"].to_numpy()
+    amps = watts / volts / np.sqrt(unit["phases"].to_numpy())
+    return np.select([joined["unit"] == "W", joined["unit"] == "A"], [watts, amps], volts)
+
+
+def _plain_flows(networks: dict[str, Any]) -> DataFrame:
+    """Run each file as a planner would: every busbar in service must get a voltage."""
+    import pandapower as pp
+
+    rows = []
+    for file, net in networks.items():
+        trial = copy.deepcopy(net)
+        try:
+            pp.runpp(trial, numba=False)
+            empty = int(trial.res_bus["vm_pu"][trial.bus["in_service"]].isna().sum())
+        except (pp.LoadflowNotConverged, FloatingPointError):
+            empty = len(trial.bus)
+        rows.append(
+            {
+                "name": file,
+                "state": "study",
+                "test": "plain load flow",
+                "quantity": "busbars without volts",
+                "unit": "count",
+                "certificate": "",
+                "correction": "",
+                "expected": 0.0,
+                "retest": float(empty),
+                "difference_percent": 100.0 * empty,
+                "verdict": "fail" if empty else "pass",
+            }
+        )
+    return pd.DataFrame(rows)
+
+
+def _regulation(rows: Rows, branches: DataFrame, regulation: DataFrame) -> DataFrame:
+    """Regulation and drop by load flow at every point of the table [percent]."""
+    points = regulation[["load_fraction", "power_factor", "sense"]].drop_duplicates()
+    n, m = len(rows.trafo), len(points)
+    known = branches.set_index("name").loc[rows.trafo["name"]]
+    rated_hv = known["rated_kv_from"].to_numpy() / rows.kv[:, 0]
+    source = np.stack([rated_hv, np.full(n, np.nan)], axis=1)
+    empty = solve(rows, source).vm[:, 1]
+    c = points["power_factor"].to_numpy()
+    s = np.where(points["sense"] == "lagging", 1.0, -1.0) * np.sqrt((1 - c) * (1 + c))
+    load = points["load_fraction"].to_numpy() * (c + 1j * s)
+    many = rows.take(np.repeat(np.arange(n), m))
+    sources = np.repeat(source, m, axis=0)
+    rating = known["rated_mva"].to_numpy()
+    nominal = rows.kv[:, 1] / known["rated_kv_to"].to_numpy()
+    shunt = (rating[:, None] * load).reshape(-1)
+    current = ((rating * nominal)[:, None] * load).reshape(-1)
+    loaded = {
+        "ieee": solve(many, sources, shunt=shunt).vm[:, 1].reshape(n, m),
+        "iec": solve(many, sources, current=current).vm[:, 1].reshape(n, m),
+    }
+    rise = 100 * (empty[:, None] - loaded["ieee"]) / loaded["ieee"]
+    drop = 100 * (empty[:, None] - loaded["iec"]) / empty[:, None]
+    keys = ["name", "load_fraction", "power_factor", "sense", "method"]
+    parts = []
+    for method, value in (("phasor", rise), ("ieee_c57_12_90", rise), ("iec_60076_8", drop)):
+        part = pd.concat([points] * n, ignore_index=True)
+        part["name"] = np.repeat(rows.trafo["name"].to_numpy(), m)
+        part["method"], part["flow_percent"] = method, value.reshape(-1)
+        parts.append(part)
+    joined = regulation.merge(pd.concat(parts), on=keys, how="left")
+    difference = (joined["flow_percent"] - joined["hand_percent"]).to_numpy()
+    joined["difference_points"] = np.where(np.isnan(difference), np.inf, difference)
+    within = np.abs(difference) <= joined["bound_points"].to_numpy()
+    joined["verdict"] = np.where(within, "pass", "fail")
+    columns = [*keys, "hand_percent", "flow_percent", "difference_points", "bound_points"]
+    return joined[[*columns, "verdict"]]
+
+
+def _failures(retest: DataFrame, regulation: DataFrame) -> list[Finding]:
+    """One error a unit whose proof failed, naming its worst quantity."""
+    findings: list[Finding] = []
+    bad = retest[retest["verdict"] == "fail"]
+    for name, rows in bad.groupby("name", sort=False):
+        size = rows["difference_percent"].abs()
+        worst = rows.loc[size.idxmax()]
+        findings.append(
+            Finding(
+                Severity.ERROR, str(name), "proof-retest",
+                f"{worst['state']} state, {worst['test']}: {worst['quantity']}",
+                f"{worst['retest']:.10g} {worst['unit']}",
+                f"{worst['expected']:.10g} {worst['unit']}",
+                f"{len(rows)} readings of the re-run differ: " + ", ".join(
+                    sorted({f"{r.test} {r.quantity}" for r in rows.itertuples()})),
+                "the written row is not the tested transformer",
+                "re-run of the tests on the written network",
+            )
+        )  # fmt: skip
+    bad = regulation[regulation["verdict"] == "fail"]
+    for name, rows in bad.groupby("name", sort=False):
+        worst = rows.loc[rows["difference_points"].abs().idxmax()]
+        findings.append(
+            Finding(
+                Severity.ERROR, str(name), "proof-regulation",
+                f"{worst['method']} at {100 * worst['load_fraction']:g} %, cosφ "
+                f"{worst['power_factor']:g} {worst['sense']}",
+                f"{worst['flow_percent']:.8g} %",
+                f"{worst['hand_percent']:.8g} ± {worst['bound_points']:.2g} %",
+                f"{len(rows)} points differ",
+                "the written row is not the tested transformer",
+                "regulation by hand against the load flow",
+            )
+        )  # fmt: skip
+    return findings
+
+
+def summary(retest: DataFrame, regulation: DataFrame) -> dict[str, float]:
+    """Return the worst residuals: percent for the re-run, share of the bound for regulation."""
+    sized = retest[retest["unit"] != "count"]["difference_percent"].abs()
+    share = (regulation["difference_points"].abs() / regulation["bound_points"]).groupby(
+        regulation["method"]
+    )
+    return {
+        "retest_worst_percent": float(sized.max()),
+        **{f"bound_use_{method}": float(value) for method, value in share.max().items()},
+    }
+
+
+def verdicts(*tables: DataFrame) -> Sequence[int]:
+    """Return how many rows passed and how many there are."""
+    passed = sum(int((table["verdict"] == "pass").sum()) for table in tables)
+    return passed, sum(len(table) for table in tables)
