@@ -12,6 +12,8 @@ import numpy as np
 
 from .errors import Finding, Severity
 from .plant import Mask, Table
+from .quantity import show
+from .standards import COMMON_PRACTICE
 
 Row = Callable[[int], Finding]
 
@@ -95,6 +97,19 @@ def _rules(units: Table) -> Iterator[tuple[Mask, Finding, Row | None]]:
         ),
         None,
     )  # fmt: skip
+    for side, base in (("hv", "base_from"), ("lv", "base_to")):
+        ratio = units[f"u_{side}"] / units[base]
+
+        def far(row: int, side: str = side, base: str = base) -> Finding:
+            rated, nominal = (show(units[c][row], "voltage") for c in (f"u_{side}", base))
+            return Finding(
+                error, "", "rated-against-nominal", place(units, f"{side}_rated_voltage", row),
+                f"rated {rated} on a busbar of {nominal}", "within 0.5 to 1.5 of nominal",
+                "no load flow can be trusted there: the unit is left out",
+                "the wrong busbar, kV for V, or phase volts for line volts", COMMON_PRACTICE,
+            )  # fmt: skip
+
+        yield (ratio <= 0.5) | (ratio >= 1.5), Finding(error, "", ""), far
     for test, name in (("oc", "open-circuit"), ("sc", "short-circuit")):
         # at no load a power factor of one within the printed digits is a unit without b; a
         # short-circuit test with no reactance is none

@@ -15,13 +15,7 @@ from typing import Any, NamedTuple
 
 import pytest
 
-from convert.circuit import (
-    base_impedance,
-    core_resistance,
-    leg,
-    magnetising_reactance,
-    ohms,
-)
+from convert.circuit import base_impedance, core_resistance, leg, magnetising_reactance, ohms
 from convert.perunit import off_nominal_ratio, series_to_base
 from convert.reduction import open_circuit, short_circuit, temperature
 from convert.reduction.resistance import ohmic_loss, star_resistance
@@ -386,11 +380,11 @@ def test_published(figure: Figure) -> None:
     assert value == pytest.approx(float(figure.published), rel=0, abs=atol)
 
 
-def test_a_stated_tolerance_has_a_reason_and_is_needed() -> None:
+def test_a_loose_tolerance_has_a_reason_and_is_needed() -> None:
     for param in FIGURES:
         (figure,) = param.values
         assert bool(figure.tolerance) == bool(figure.reason), param.id
-        if figure.tolerance:
+        if figure.tolerance and float(figure.tolerance) > half_digit(figure.published):
             value = QUANTITIES[figure.quantity](GIVEN[figure.record], figure) / UNITS[figure.unit]
             off = abs(value - float(figure.published))
             assert half_digit(figure.published) < off, param.id

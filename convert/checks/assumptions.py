@@ -1,0 +1,216 @@
+"""What was assumed, taken over or simplified, each with the size of its effect."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import Any
+
+import numpy as np
+
+from .. import circuit
+from ..errors import Finding, Severity
+from ..gates import at_limit, each, needs_temperature, place, printed, separable
+from ..plant import Plant, Status, Table
+from ..quantity import show
+from ..standards import COMMON_PRACTICE
+
+
+def rules(plant: Plant, units: Table, model: str) -> Iterator[Finding]:
+    """Yield the findings of every rule of this file."""
+    yield from _temperature(plant, units)
+    yield from _constants(units)
+    yield from _not_separated(units)
+    yield from _facts(units)
+    yield from _no_load_volts(units)
+    yield from _mixed(units)
+    if model == "T":
+        yield from _exact_row(units)
+    else:
+        yield from _cantilever(units)
+
+
+def _is(units: Table, column: str, status: Status) -> Any:
+    return units.status[column] == status
+
+
+def _watts(value: float) -> str:
+    return show(float(value), "active_power", 5)
+
+
+def _temperature(plant: Plant, units: Table) -> Iterator[Finding]:
+    def fill(row: int) -> Finding:
+        return Finding(
+            Severity.CAUTION, "", "study-temperature-assumed", "system.study_temperature",
+            "no study or reference temperature", "the temperature that the study wants",
+            f"75 °C assumed: load loss {_watts(units['pk_study'][row])}, "
+            f"{_watts(units['pk_tested'][row])} as tested at {units['t_tested'][row]:g} °C",
+            "", "IEC 60076-1:2011, 11.1: 75 °C for liquid-immersed units (from memory)",
+        )  # fmt: skip
+
+    yield from each(
+        units, _is(units, "t_study", Status.ASSUMED), Finding(Severity.NOTE, "", ""), fill
+    )
+    cold = _is(units, "t_tested", Status.ASSUMED)
+
+    def cold_fill(row: int) -> Finding:
+        r, t, k = units["r_study"][row], units["t_tested"][row], units["k_hv"][row]
+        effect = 100 * 10 / (k + t) if k == k else 100 * 10 / (235 + t)
+        return Finding(
+            Severity.CAUTION, "", "winding-temperature-assumed",
+            place(units, "assume_winding_temperature", row), f"assumed {t:g} °C",
+            "the winding temperature of the short-circuit test",
+            f"10 K more changes r ({100 * r:.4g} %) by about -{effect:.1f} %", "",
+            "assumed by the sheet",
+        )  # fmt: skip
+
+    own = units.word("assume_winding_temperature") != ""
+    yield from each(units, cold & own, Finding(Severity.CAUTION, "", ""), cold_fill)
+
+
+def _constants(units: Table) -> Iterator[Finding]:
+    moved = needs_temperature(units)
+    unnamed = (units.word("certificate_standard") == "") & moved
+    t, t0 = units["t_study"], units["t_tested"]
+    other = units["k_hv"] - 0.5
+    change = (other + t) / (other + t0) / ((units["k_hv"] + t) / (units["k_hv"] + t0)) - 1
+
+    def fill(row: int) -> Finding:
+        return Finding(
+            Severity.NOTE, "", "standard-assumed", "certificate.standard", "no standard named",
+            "IEC 60076-1 or IEEE C57.12.00", "winding constants of IEC practice: the other's "
+            f"copper constant changes I²R by {100 * change[row]:+.2g} %", "",
+            "IEC 60076-1:2011, 11.1 (from memory)",
+        )  # fmt: skip
+
+    yield from each(units, unnamed, Finding(Severity.NOTE, "", ""), fill)
+    assumed = moved & ((units.word("hv_metal") == "") | (units.word("lv_metal") == ""))
+
+    def metal(row: int) -> Finding:
+        word = printed(units, "assume_metal", row)
+        aluminium = (225 + t[row]) / (225 + t0[row])
+        copper = (235 + t[row]) / (235 + t0[row])
+        return Finding(
+            Severity.CAUTION, "", "metal-assumed", place(units, "assume_metal", row),
+            f"assumed {word}", "the metal of both windings",
+            f"the other metal changes I²R by {100 * abs(aluminium / copper - 1):.2g} %", "",
+            "assumed by the sheet",
+        )  # fmt: skip
+
+    yield from each(units, assumed, Finding(Severity.CAUTION, "", ""), metal)
+
+
+def _not_separated(units: Table) -> Iterator[Finding]:
+    def fill(row: int) -> Finding:
+        upper, tested = units["pk_study"][row], units["pk_tested"][row]
+        lower = tested * tested / upper
+        has = [side for side in ("hv", "lv") if units.has(f"ohms_{side}")[row]]
+        found = f"ohms of {has[0]} only" if has else "no winding resistances"
+        return Finding(
+            Severity.CAUTION, "", "loss-not-separated", "tests.resistance", found,
+            "winding resistances of both sides",
+            f"the whole load loss is carried as I²R: {_watts(upper)}; if all were stray it would "
+            f"be {_watts(lower)}", "", "upper bound; IEC 60076-1:2011, Annex E (from memory)",
+        )  # fmt: skip
+
+    bad = ~separable(units) & (units["t_study"] != units["t_tested"])
+    yield from each(units, bad, Finding(Severity.CAUTION, "", ""), fill)
+
+
+def _facts(units: Table) -> Iterator[Finding]:
+    for test, name, effect in (
+        ("oc", "no_load_loss", "the shunt branch rests on it"),
+        ("sc", "load_loss", "the series branch rests on it"),
+    ):
+        second = "no_load_current" if test == "oc" else "impedance_voltage"
+        for status, block, severity in (
+            (Status.GIVEN, "results", Severity.NOTE),
+            (Status.ASSUMED, "assume", Severity.CAUTION),
+        ):
+
+            def fill(row: int, block: str = block, name: str = name, second: str = second,
+                     severity: Severity = severity, effect: str = effect) -> Finding:  # fmt: skip
+                first = printed(units, f"{block}_{name}", row)
+                verb = "assumed" if block == "assume" else "given"
+                return Finding(
+                    severity, "", f"{name.replace('_', '-')}-{verb}",
+                    place(units, f"{block}_{name}", row),
+                    f"{first}, {printed(units, f'{block}_{second}', row)} {verb}",
+                    "readings of the test", effect, "",
+                    "assumed by the sheet" if block == "assume" else "results of the certificate",
+                )  # fmt: skip
+
+            yield from each(
+                units, _is(units, f"{test}_watts", status), Finding(severity, "", ""), fill
+            )
+
+    def unity(row: int) -> Finding:
+        return Finding(
+            Severity.CAUTION, "", "no-load-power-factor-one", place(units, "oc_watts", row),
+            f"cosφ = {units['oc_cosphi'][row]:.5g}, above 1 by less than the printed digits",
+            "i0 above P0/S", "b = 0 and i0 = P0/S are assumed: no magnetising branch",
+            "i0 or P0 rounded, or i0 filled in from P0", COMMON_PRACTICE,
+        )  # fmt: skip
+
+    yield from each(units, at_limit(units), Finding(Severity.CAUTION, "", ""), unity)
+
+
+def _no_load_volts(units: Table) -> Iterator[Finding]:
+    ratio = units["oc_rated_volts"] / units["oc_volts"]
+    digit = np.nan_to_num(units.half_digit["oc_volts"]) / units["oc_volts"]
+
+    def fill(row: int) -> Finding:
+        return Finding(
+            Severity.NOTE, "", "no-load-not-at-rated-volts", place(units, "oc_volts", row),
+            f"{printed(units, 'oc_volts', row)}, {100 / ratio[row]:.4g} % of rated",
+            "readings at rated volts",
+            f"linear branch: loss ×{ratio[row] ** 2:.4f}, current ×{ratio[row]:.4f}; a core that "
+            "saturates draws more above rated volts", "",
+            "linear shunt branch, common practice, no source",
+        )  # fmt: skip
+
+    yield from each(units, np.abs(ratio - 1) > digit + 1e-12, Finding(Severity.NOTE, "", ""), fill)
+
+
+def _mixed(units: Table) -> Iterator[Finding]:
+    temperatures = sorted(set(units["t_study"].tolist()))
+    if len(temperatures) > 1:
+        listed = ", ".join(f"{t:g}" for t in temperatures)
+        yield Finding(
+            Severity.CAUTION, "the study", "mixed-temperatures", "system.study_temperature",
+            f"branches at {listed} °C", "one winding temperature for the whole study",
+            "losses and drops of the units are not comparable", "",
+            COMMON_PRACTICE, units.n,
+        )  # fmt: skip
+
+
+def _exact_row(units: Table) -> Iterator[Finding]:
+    off = np.abs(units["z_t_study"]) / np.abs(units["z_sc_study"]) - 1
+    if not units.n or not np.abs(off).max():
+        return
+    row = int(np.abs(off).argmax())
+    yield Finding(
+        Severity.NOTE, "the study", "exact-circuit", "vk_percent, i0_percent of the network files",
+        f"{units.text['name'][row]}: vk_percent {100 * abs(units['z_t_study'][row]):.6f}",
+        f"the certificate's {100 * abs(units['z_sc_study'][row]):.6f}",
+        f"meant: the T circuit with this value gives the certificate's reading; typed in as it "
+        f"stands it would be off by up to {100 * np.abs(off).max():.2g} % (trafo_model pi gives "
+        "another answer)", "", "exact T, two-port theory", units.n,
+    )  # fmt: skip
+
+
+def _cantilever(units: Table) -> Iterator[Finding]:
+    z, y = units["z_sc_study"], units["y_oc"]
+    seen_y = np.where(units["oc_from"] == 1, y, circuit.open_circuit_admittance(z, y))
+    seen_z = np.where(units["sc_from"] == 1, circuit.short_circuit_impedance(0, z, y), z)
+    off_y, off_z = np.abs(seen_y) / np.abs(y) - 1, np.abs(seen_z) / np.abs(z) - 1
+
+    def fill(row: int) -> Finding:
+        return Finding(
+            Severity.NOTE, "", "simplified-circuit", "option model",
+            f"re-run amps {100 * off_y[row]:+.2g} %, volts {100 * off_z[row]:+.2g} % off the "
+            "certificate", "the exact T gives both readings",
+            "the simplified circuit is proven against its own reading", "",
+            "shunt at the from terminals, two-port theory",
+        )  # fmt: skip
+
+    yield from each(units, np.ones(units.n, dtype=np.bool_), Finding(Severity.NOTE, "", ""), fill)
