@@ -13,10 +13,10 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from .basechange import rebase
     from .errors import BranchwrightError, Finding
     from .intake.sheet import read
     from .plant import Plant
-    from .rebase import rebase
     from .study import Study, build, prove
 
 _HOME = {
@@ -27,7 +27,7 @@ _HOME = {
     "build": ".study",
     "prove": ".study",
     "read": ".intake.sheet",
-    "rebase": ".rebase",
+    "rebase": ".basechange",
 }
 __all__ = ["BranchwrightError", "Finding", "Plant", "Study", "build", "prove", "read", "rebase"]
 

@@ -30,7 +30,7 @@ def csv_text(table: pd.DataFrame) -> str:
     Text that a spreadsheet would take for a formula gets an apostrophe in front.
     """
     escaped = table.copy()
-    for column in escaped.columns[escaped.dtypes == object]:
+    for column in escaped.select_dtypes(object).columns:
         escaped[column] = [
             f"'{cell}" if isinstance(cell, str) and cell.startswith(_FORMULA_STARTS) else cell
             for cell in escaped[column]
@@ -102,10 +102,10 @@ def write(folder: Path, files: Mapping[str, str], record: Mapping[str, Any], for
         (folder / RECORD).unlink(missing_ok=True)
         for name in CONTRACT[:-1]:
             if name in files:
-                os.replace(partial / name, folder / name)
+                (partial / name).replace(folder / name)
             else:
                 (folder / name).unlink(missing_ok=True)
-        os.replace(partial / RECORD, folder / RECORD)
+        (partial / RECORD).replace(folder / RECORD)
     finally:
         shutil.rmtree(partial, ignore_errors=True)
 
@@ -121,7 +121,7 @@ def write_file(path: Path, text: str, force: bool) -> None:
         with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as out:
             out.write(text)
         Path(partial).chmod(0o644)
-        os.replace(partial, path)
+        Path(partial).replace(path)
     finally:
         Path(partial).unlink(missing_ok=True)
 

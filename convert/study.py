@@ -12,7 +12,6 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import Any
 
-import numpy as np
 import pandas as pd
 
 from . import chain, checks, entries, expectation, folder, proof, unitsheet
@@ -63,9 +62,7 @@ class Study:
     @property
     def findings(self) -> pd.DataFrame:
         """The findings as a table, columns as in findings.csv."""
-        columns = list(Finding.__dataclass_fields__)
-        rows = [{**asdict(f), "severity": f.severity.value} for f in self.problems]
-        return pd.DataFrame(rows, columns=columns)
+        return findings_table(self.problems)
 
     @property
     def passed(self) -> bool:
@@ -135,6 +132,12 @@ class Study:
             "steps": self.steps,
             "caution": CAUTION,
         }
+
+
+def findings_table(findings: Sequence[Finding]) -> pd.DataFrame:
+    """Return findings as a table, columns as in findings.csv."""
+    rows = [{**asdict(finding), "severity": finding.severity.value} for finding in findings]
+    return pd.DataFrame(rows, columns=list(Finding.__dataclass_fields__))
 
 
 def versions() -> dict[str, str]:
@@ -317,8 +320,3 @@ def prove(
     expected = expected[expected["unit"] != "count"].reset_index(drop=True)
     points = regulation.drop(columns=["flow_percent", "difference_points", "verdict"])
     return proof.prove(target, branches, units, expected, points, progress)
-
-
-def largest(values: Sequence[float]) -> float:
-    """Return the largest magnitude, 0 for none."""
-    return float(np.abs(np.asarray(values, dtype=float)).max(initial=0.0))

@@ -50,11 +50,11 @@ def _stray(units: Table) -> Iterator[Finding]:
 
     def fill(row: int) -> Finding:
         high = share[row] > 0
-        ohmic = units["p_hv_tested"][row] + units["p_lv_tested"][row]
+        ohmic = show(units["p_hv_tested"][row] + units["p_lv_tested"][row], "active_power", 4)
+        total = show(units["pk_tested"][row], "active_power", 4)
         return Finding(
             Severity.CAUTION, "", "stray-loss", place(units, "ohms_hv", row),
-            f"stray loss {100 * share[row]:.1f} % of the load loss: I²R "
-            f"{show(ohmic, 'active_power', 4)} of {show(units['pk_tested'][row], 'active_power', 4)}",
+            f"stray loss {100 * share[row]:.1f} % of the load loss: I²R {ohmic} of {total}",
             f"0 to {100 * STRAY_SHARE:g} %",
             "the load loss is carried to the study's temperature with a wrong split",
             "resistance in mΩ entered as µΩ, or one side's reading a factor too small" if high
