@@ -16,12 +16,16 @@ from .quantity import show
 from .standards import COMMON_PRACTICE
 
 Row = Callable[[int], Finding]
+#: prefix of a gathered column -> what the sheet calls the test
+_TESTS = {"oc_": "open_circuit_", "sc_": "short_circuit_", "ohms_": "resistance_"}
 
 
 def place(units: Table, column: str, row: int) -> str:
     """Return `file:line key` of a reading, as far as the source tells."""
     line = int(units.line[column][row]) if column in units.line else 0
     line = line or int(units.line["row"][row])
+    for short, full in _TESTS.items():
+        column = column.replace(short, full, 1) if column.startswith(short) else column
     return f"{units.text['file'][row]}:{line} {column.replace('_', ' ')}"
 
 

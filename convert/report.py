@@ -40,12 +40,12 @@ def study_text(study: Study, target: Path | None, written: Sequence[str]) -> str
 def branch_text(branches: pd.DataFrame) -> str:
     """Return the branch table: where it runs, and its per-unit values."""
     ends = [
-        (b.name, b.from_busbar, b.to_busbar, f"{b.rated_mva:g}", f"{b.rated_kv_from:g}/"
-         f"{b.rated_kv_to:g}", f"{b.shift_deg:g}", b.status)
+        (_short(b.name, 20), _short(b.from_busbar, 20), _short(b.to_busbar, 20),
+         f"{b.rated_mva:g}", f"{b.rated_kv_from:g}/{b.rated_kv_to:g}", f"{b.shift_deg:g}", b.status)
         for b in _rows(branches)
     ]  # fmt: skip
     values = [
-        (b.name, f"{b.base_mva:g}", _number(b.r_pu), _number(b.x_pu), _number(b.g_pu),
+        (_short(b.name, 20), f"{b.base_mva:g}", _number(b.r_pu), _number(b.x_pu), _number(b.g_pu),
          _number(b.b_pu), _number(b.ratio_pu), f"{b.winding_temp_degc:g}")
         for b in _rows(branches)
     ]  # fmt: skip
@@ -60,21 +60,34 @@ def branch_text(branches: pd.DataFrame) -> str:
 
 def proof_text(retest: pd.DataFrame, regulation: pd.DataFrame) -> str:
     """Return the proof: the re-run of the tests, regulation, and the verdict."""
-    lines: list[str] = []
-    shown = retest["name"].isin(_first(retest["name"])) | (retest["verdict"] == "fail")
-    listed = retest[shown]
-    lines.append("Tests re-run on the network read back from its file:")
-    lines += grid(
-        ("unit", "state", "test", "quantity", "", "certificate", "expected", "re-run", "diff %",
-         "verdict"),
-        [
-            (r.name, r.state, r.test, r.quantity, r.unit, _short(r.certificate, 14),
-             _number(r.expected, 7), _number(r.retest, 7), f"{r.difference_percent:.0e}", r.verdict)
-            for r in _rows(listed)
-        ],
-    )  # fmt: skip
+    lines = ["Tests re-run on the network read back from its file:", *_retest_lines(retest)]
     lines += ["", *_regulation_lines(regulation), "", verdict_line(retest, regulation)]
     return "\n".join(lines)
+
+
+def _retest_lines(retest: pd.DataFrame) -> Iterator[str]:
+    """Expected and re-run readings unit by unit, then the plain load flow of each file."""
+    flows = retest["unit"] == "count"
+    shown = retest["name"].isin(_first(retest["name"])) | (retest["verdict"] == "fail")
+    listed = _rows(retest[shown & ~flows])
+    head, *body = grid(
+        ("state", "test", "quantity", "certificate", "expected", "re-run", "diff %", "verdict"),
+        [
+            (r.state, r.test, r.quantity, _short(r.certificate, 12),
+             _reading(r.expected, r.unit), _reading(r.retest, r.unit),
+             f"{r.difference_percent:.0e}", r.verdict)
+            for r in listed
+        ],
+    )  # fmt: skip
+    yield head
+    unit = None
+    for row, line in zip(listed, body, strict=False):
+        if row.name != unit:
+            unit = row.name
+            yield f"{unit}:"
+        yield line
+    for row in _rows(retest[flows]):
+        yield f"{row.name}: plain load flow, {row.retest:g} busbars without volts: {row.verdict}"
 
 
 def _regulation_lines(regulation: pd.DataFrame) -> Iterator[str]:
@@ -86,7 +99,7 @@ def _regulation_lines(regulation: pd.DataFrame) -> Iterator[str]:
     shown = regulation[full | (regulation["verdict"] == "fail")]
     yield f"Regulation and drop in % at {100 * top:g} % load, by hand and by load flow:"
     rows = [
-        (r.name, f"{r.power_factor:g} {r.sense}", r.method, f"{r.hand_percent:.6f}",
+        (_short(r.name, 16), f"{r.power_factor:g} {r.sense}", r.method, f"{r.hand_percent:.6f}",
          f"{r.flow_percent:.6f}", f"{r.difference_points:+.1e}", f"{r.bound_points:.1e}", r.verdict)
         for r in _rows(shown)
     ]  # fmt: skip
@@ -245,6 +258,10 @@ def _short(text: str, size: int) -> str:
 
 def _number(value: float, digits: int = 6) -> str:
     return f"{value:.{digits}g}"
+
+
+def _reading(value: float, unit: str) -> str:
+    return f"{value:.4f} {unit}" if unit == "deg" else f"{_number(value, 7)} {unit}"
 
 
 def _cell(value: Any) -> str:
