@@ -17,6 +17,12 @@ from .plant import Plant, System, Table
 
 Columns = dict[str, np.ndarray[Any, Any]]
 METHODS = ("phasor", "ieee_c57_12_90", "iec_60076_8")
+#: hand formulas that are not applied to columns of one unit each, for the record
+HAND = (
+    regulation.thevenin, regulation.regulation_phasor, regulation.regulation_ieee,
+    regulation.bound_ieee, regulation.drop_iec, regulation.cross_component, regulation.bound_iec,
+    regulation.loss, regulation.efficiency,
+)  # fmt: skip
 UNIT_OF = {"volts": "V", "amps": "A", "watts": "W", "angle": "deg", "nominal": "V"}
 
 

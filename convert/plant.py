@@ -101,6 +101,12 @@ class Table:
         filled = np.where(where, value, self.values[column])
         self.set(column, filled, np.where(where, np.uint8(status), self.status[column]))
 
+    def overwrite(self, column: str, other: str, where: Mask) -> None:
+        """Replace values and status of a column by another's where `where` holds."""
+        self.values[column] = np.where(where, self.values[other], self.values[column])
+        status = np.where(where, self.status[other], self.status[column])
+        self.status[column] = status.astype(np.uint8)
+
     def put(
         self,
         out: str,

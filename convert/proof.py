@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import copy
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,6 +17,7 @@ import pandas as pd
 
 from . import entries
 from .errors import Finding, Severity
+from .flow import Flow, Rows, read_network, solve
 
 if TYPE_CHECKING:
     from pandas import DataFrame
@@ -27,43 +27,8 @@ FILES = ("network.json", "single_phase.json")
 TOLERANCE = 1e-8
 #: an angle is compared in shares of a full turn
 FULL_TURN = 360.0
-#: the library takes this per unit on the network's own power; its own floor lies at about 1e-13
-_FLOW_TOLERANCE_MVA = 1e-12
-_MOST_ISLANDS = 3000
 _FED_PU, _SHORTED_PU = 0.05, 1e-15
 KEYS = ["name", "state", "test", "quantity"]
-
-
-@dataclass(frozen=True)
-class Rows:
-    """Transformer rows read back from a file: each with its two buses' names and kV.
-
-    trafo has n rows; kv, names are (n, 2) for the HV and the LV bus; amp_factor is sqrt(3) for
-    single-phase units, whose file says so.
-    """
-
-    trafo: DataFrame
-    kv: np.ndarray[Any, Any]
-    names: np.ndarray[Any, Any]
-    amp_factor: np.ndarray[Any, Any]
-
-    def take(self, at: Any) -> Rows:
-        """Return the rows at these positions."""
-        trafo = self.trafo.iloc[at].reset_index(drop=True)
-        return Rows(trafo, self.kv[at], self.names[at], self.amp_factor[at])
-
-
-@dataclass(frozen=True)
-class Flow:
-    """Results of one load flow a row, NaN where it found none: (n, 2) for HV and LV.
-
-    vm [pu], va [deg] at the buses; p [MW], q [Mvar], i [kA] into the transformer.
-    """
-
-    vm: np.ndarray[Any, Any]
-    va: np.ndarray[Any, Any]
-    p: np.ndarray[Any, Any]
-    i: np.ndarray[Any, Any]
 
 
 def prove(
@@ -110,13 +75,6 @@ def prove(
     retested = pd.concat([retested, _plain_flows(networks)], ignore_index=True)
     regulated = _regulation(study, branches, regulation)
     return retested, regulated, _failures(retested, regulated)
-
-
-def read_network(path: Path) -> Any:
-    """Load a network file with pandapower."""
-    import pandapower as pp
-
-    return pp.from_json(str(path))
 
 
 def _study_rows(networks: dict[str, Any], branches: DataFrame) -> Rows:
@@ -171,151 +129,6 @@ def _tested_rows(branches: DataFrame, units: DataFrame) -> Rows:
         np.stack([column["from_busbar"], column["to_busbar"]], axis=1),
         np.where(column["phases"] == 1, np.sqrt(3.0), 1.0),
     )
-
-
-def solve(
-    rows: Rows,
-    source: np.ndarray[Any, Any],
-    shunt: np.ndarray[Any, Any] | None = None,
-    current: np.ndarray[Any, Any] | None = None,
-    angles: bool = False,
-    near_rated: bool = True,
-) -> Flow:
-    """Solve each row as an island of its own, many islands a network.
-
-    Parameters
-    ----------
-    rows : Rows
-        n transformers.
-    source : (n, 2) float
-        Source volts at the HV and LV bus [pu of the bus], NaN for none.
-    shunt, current : (n,) complex, optional
-        Load at the LV bus [MVA, at its rated volts and its nominal volts]: constant impedance,
-        or constant current.
-    angles : bool
-        Whether the transformers' phase shift is solved for.
-    near_rated : bool
-        Refuse volts outside 0.5 to 1.5 per unit: the library knows false solutions there.
-
-    Returns
-    -------
-    Flow
-        NaN for islands without a solution, or whose power does not balance.
-    """
-    n = len(rows.trafo)
-    out = Flow(*(np.full((n, 2), np.nan) for _ in range(4)))
-    rating = rows.trafo["sn_mva"].to_numpy(dtype=float)
-    with np.errstate(all="ignore"):
-        decade = np.floor(np.log10(rating))
-    for size in np.unique(decade[np.isfinite(decade)]):
-        alike = np.flatnonzero(decade == size)
-        for start in range(0, len(alike), _MOST_ISLANDS):
-            at = alike[start : start + _MOST_ISLANDS]
-            load = (None if shunt is None else shunt[at], None if current is None else current[at])
-            _solve_chunk(rows, at, source[at], load, angles, near_rated, 10.0**size, out)
-    return out
-
-
-def _solve_chunk(
-    rows: Rows,
-    at: Any,
-    source: Any,
-    load: tuple[Any, Any],
-    angles: bool,
-    near_rated: bool,
-    power: float,
-    out: Flow,
-) -> None:
-    """Solve the islands `at`; where the library finds no solution, halve until it is one unit."""
-    import pandapower as pp
-
-    net = _islands(rows.take(at), source, load, power)
-    try:
-        pp.runpp(
-            net, numba=False, check_connectivity=False, calculate_voltage_angles=angles,
-            init="dc" if angles else "flat", tolerance_mva=_FLOW_TOLERANCE_MVA, max_iteration=60,
-        )  # fmt: skip
-    except (pp.LoadflowNotConverged, FloatingPointError, ZeroDivisionError):
-        if len(at) > 1:
-            for half in (slice(0, len(at) // 2), slice(len(at) // 2, None)):
-                shunt, current = (None if part is None else part[half] for part in load)
-                _solve_chunk(
-                    rows, at[half], source[half], (shunt, current), angles, near_rated, power, out
-                )
-        return
-    n = len(at)
-    vm = net.res_bus["vm_pu"].to_numpy().reshape(2, n).T
-    good = _balanced(net, n, power)
-    if near_rated:
-        good &= ((vm > 0.5) & (vm < 1.5)).all(axis=1)
-    done = at[good]
-    out.vm[done] = vm[good]
-    out.va[done] = net.res_bus["va_degree"].to_numpy().reshape(2, n).T[good]
-    for result, name in ((out.p, "p_{}_mw"), (out.i, "i_{}_ka")):
-        columns = [net.res_trafo[name.format(side)].to_numpy() for side in ("hv", "lv")]
-        result[done] = np.stack(columns, axis=1)[good]
-
-
-def _islands(rows: Rows, source: Any, load: tuple[Any, Any], power: float) -> Any:
-    """Return a network of n islands: buses 0..n-1 are the HV, n..2n-1 the LV ones."""
-    import pandapower as pp
-
-    n = len(rows.trafo)
-    kv = rows.kv.T.reshape(-1)
-    held = source.T.reshape(-1)
-    net = pp.create_empty_network(sn_mva=power, add_stdtypes=False)
-    net.bus = _typed(net.bus, {"name": None, "vn_kv": kv, "type": "b", "in_service": True}, 2 * n)
-    at = np.flatnonzero(~np.isnan(held))
-    net.ext_grid = _typed(
-        net.ext_grid,
-        {"bus": at, "vm_pu": held[at], "va_degree": 0.0, "slack_weight": 1.0, "in_service": True},
-        len(at),
-    )
-    trafo = rows.trafo.copy()
-    trafo["hv_bus"] = np.arange(n, dtype="uint32")
-    trafo["lv_bus"] = np.arange(n, 2 * n, dtype="uint32")
-    net.trafo = trafo
-    shunt, current = load
-    lv = np.arange(n, 2 * n)
-    if shunt is not None:
-        rated = trafo["vn_lv_kv"].to_numpy()
-        columns = {"bus": lv, "p_mw": shunt.real, "q_mvar": shunt.imag, "vn_kv": rated, "step": 1,
-                   "max_step": 1, "in_service": True}  # fmt: skip
-        net.shunt = _typed(net.shunt, columns, n)
-    if current is not None:
-        share = dict.fromkeys(("const_i_p_percent", "const_i_q_percent"), 100.0)
-        none = dict.fromkeys(("const_z_p_percent", "const_z_q_percent"), 0.0)
-        columns = {"bus": lv, "p_mw": current.real, "q_mvar": current.imag, "scaling": 1.0,
-                   "in_service": True, **share, **none}  # fmt: skip
-        net.load = _typed(net.load, columns, n)
-    return net
-
-
-def _typed(empty: DataFrame, columns: dict[str, Any], n: int) -> DataFrame:
-    """Return n rows with the columns and types of a library table."""
-    table = pd.DataFrame(index=pd.RangeIndex(n))
-    for name, kind in empty.dtypes.items():
-        value = columns.get(str(name), False if kind.kind == "b" else None)
-        table[name] = pd.Series([value] * n if np.isscalar(value) or value is None else value,
-                                index=table.index).astype(kind)  # fmt: skip
-    return table
-
-
-def _balanced(net: Any, n: int, power: float) -> np.ndarray[Any, Any]:
-    """Return (n,) bool: what the sources feed into each island is what its elements take."""
-    taken = np.zeros(2 * n, dtype=complex)
-    flow = net.res_trafo
-    taken[:n] += flow["p_hv_mw"].to_numpy() + 1j * flow["q_hv_mvar"].to_numpy()
-    taken[n:] += flow["p_lv_mw"].to_numpy() + 1j * flow["q_lv_mvar"].to_numpy()
-    for name in ("shunt", "load"):
-        if len(net[name]):
-            result = net[f"res_{name}"]
-            taken[n:] += result["p_mw"].to_numpy() + 1j * result["q_mvar"].to_numpy()
-    fed = net.res_ext_grid
-    given = fed["p_mw"].to_numpy() + 1j * fed["q_mvar"].to_numpy()
-    np.subtract.at(taken, net.ext_grid["bus"].to_numpy(), given)
-    largest = np.abs(taken.reshape(2, n)).max(axis=0)
-    return np.asarray(largest < 1e-9 * power * 10, dtype=bool)
 
 
 def _wanted(rows: Rows, mine: DataFrame, test: str, drive: str) -> tuple[Any, Any]:

@@ -225,19 +225,28 @@ def build(
         retest, regulation, failures = proof.prove(
             Path(scratch), branches, table, expected, points, progress
         )
-    steps = [
-        {
-            "out": step.out,
-            "formula": formula_text(step.formula),
-            "with": ", ".join(f"{name} = {column}" for name, column in step.columns),
-            "source": str(getattr(step.formula, "source", "")),
-        }
-        for step in units.steps.values()
-    ]
     return Study(
         plant, model, branches, table, losses, retest, regulation,
-        [*findings, *sources, *failures], left_out, texts, steps, options or {},
+        [*findings, *sources, *failures], left_out, texts, _steps(units), options or {},
     )  # fmt: skip
+
+
+def _steps(units: Table) -> list[dict[str, str]]:
+    """Return every formula that made a number of this study, once, with its source."""
+    logged = [
+        (step.out, step.formula, ", ".join(f"{name} = {column}" for name, column in step.columns))
+        for step in units.steps.values()
+    ]
+    by_hand = [(formula.__name__, formula, "per load point") for formula in expectation.HAND]
+    return [
+        {
+            "out": out,
+            "formula": formula_text(formula),
+            "with": arguments,
+            "source": str(getattr(formula, "source", "")),
+        }
+        for out, formula, arguments in [*logged, *by_hand]
+    ]
 
 
 def error_line(finding: Finding) -> str:

@@ -51,7 +51,8 @@ def formula_text(formula: Callable[..., Any]) -> str:
     """Return the body of a formula as one line, without its docstring."""
     function = ast.parse(textwrap.dedent(inspect.getsource(formula))).body[0]
     assert isinstance(function, ast.FunctionDef)
-    return "; ".join(ast.unparse(statement) for statement in function.body[1:])
+    text = "; ".join(ast.unparse(statement) for statement in function.body[1:])
+    return text.replace("return ", "")
 
 
 @cache
