@@ -38,7 +38,7 @@ def run(plant: Plant, model: str = "T") -> tuple[Table, list[Finding]]:
         An error for each unit that did not.
     """
     units = gather(plant)
-    passed, findings = gates.check(units)
+    passed, findings = gates.check(plant, units)
     units = units.take(np.flatnonzero(passed))
     reduce_open_circuit(units)
     reduce_short_circuit(units)

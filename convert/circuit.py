@@ -88,7 +88,8 @@ def exact_t_unequal(
     for _ in range(ROUNDS):
         z_s = leg(z, r_oc, x_oc)
         y_m = exact_t_shunt(y_oc, z_s)
-        same = z_s + 1 / (1 / (z_sc - z_s) - y_m)
+        rest = z_sc - z_s
+        same = z_s + rest / (1 - rest * y_m)
         z = np.where(np.equal(oc_from, sc_from), same, z_sc + z_s**2 * y_oc)
     return z
 

@@ -15,6 +15,11 @@ class Severity(StrEnum):
     NOTE = "note"
 
 
+def printable(text: str) -> str:
+    """Return text whose control characters are written out, so that none reaches a terminal."""
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text)
+
+
 @dataclass(frozen=True)
 class Problem:
     """One fault of an input: where it stands, what was read, what was expected, how to mend it."""
@@ -33,7 +38,7 @@ class Problem:
         if self.key:
             parts.append(self.key)
         text = ": ".join(parts) + f": read {self.read}; expected {self.expected}"
-        return f"{text}; {self.mend}" if self.mend else text
+        return printable(f"{text}; {self.mend}" if self.mend else text)
 
 
 @dataclass(frozen=True)

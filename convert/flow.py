@@ -13,12 +13,23 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pandas as pd
 
+from .errors import BranchwrightError
+
 if TYPE_CHECKING:
     from pandas import DataFrame
 
 #: the library takes this per unit on the network's own power; its own floor lies at about 1e-13
 _FLOW_TOLERANCE_MVA = 1e-12
 _MOST_ISLANDS = 3000
+
+
+_POSITIVE = ("sn_mva", "vn_hv_kv", "vn_lv_kv", "vk_percent", "parallel")
+#: what a file must hold to be proven
+_NEEDED = {
+    "bus": {"name", "vn_kv", "in_service"},
+    "trafo": {"name", "hv_bus", "lv_bus", "shift_degree", "in_service", "vkr_percent", "pfe_kw",
+              "i0_percent", *_POSITIVE},
+}  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -54,10 +65,34 @@ class Flow:
 
 
 def read_network(path: Path) -> Any:
-    """Load a network file with pandapower."""
+    """Load a network file with pandapower; one that it cannot read is refused by name."""
     import pandapower as pp
 
-    return pp.from_json(str(path))
+    try:
+        net = pp.from_json(str(path))
+        lacking = {name: _NEEDED[name] - set(net[name].columns) for name in _NEEDED}
+    except Exception as error:  # an edited file can make the library raise anything
+        text = f"{path}: is no network that pandapower reads ({type(error).__name__})"
+        raise BranchwrightError([text]) from None
+    if any(lacking.values()):
+        listed = ", ".join(
+            sorted(f"{table}.{c}" for table, names in lacking.items() for c in names)
+        )
+        raise BranchwrightError([f"{path}: lacks the columns {listed}"])
+    return net
+
+
+def sound(rows: Rows) -> np.ndarray[Any, Any]:
+    """Return (n,) bool: rows whose numbers a load flow can take; others would spoil their chunk."""
+    number = {
+        name: pd.to_numeric(rows.trafo[name], errors="coerce").to_numpy(dtype=float)
+        for name in (*_POSITIVE, "vkr_percent", "pfe_kw", "i0_percent", "shift_degree")
+    }
+    good = np.isfinite(rows.kv).all(axis=1) & (rows.kv > 0).all(axis=1)
+    for name, column in number.items():
+        good &= np.isfinite(column) & ((column > 0) | (name not in _POSITIVE))
+    in_service = rows.trafo["in_service"].to_numpy() == True  # noqa: E712 - may be text or None
+    return np.asarray(good & (number["vkr_percent"] <= number["vk_percent"]) & in_service)
 
 
 def solve(
@@ -91,11 +126,10 @@ def solve(
     """
     n = len(rows.trafo)
     out = Flow(*(np.full((n, 2), np.nan) for _ in range(4)))
-    rating = rows.trafo["sn_mva"].to_numpy(dtype=float)
-    with np.errstate(all="ignore"):
-        decade = np.floor(np.log10(rating))
-    for size in np.unique(decade[np.isfinite(decade)]):
-        alike = np.flatnonzero(decade == size)
+    usable = np.flatnonzero(sound(rows))
+    decade = np.floor(np.log10(rows.trafo["sn_mva"].to_numpy()[usable].astype(float)))
+    for size in np.unique(decade):
+        alike = usable[decade == size]
         for start in range(0, len(alike), _MOST_ISLANDS):
             at = alike[start : start + _MOST_ISLANDS]
             load = (None if shunt is None else shunt[at], None if current is None else current[at])
@@ -116,13 +150,13 @@ def _solve_chunk(
     """Solve the islands `at`; where the library finds no solution, halve until it is one unit."""
     import pandapower as pp
 
-    net = _islands(rows.take(at), source, load, power)
     try:
+        net = _islands(rows.take(at), source, load, power)
         pp.runpp(
             net, numba=False, check_connectivity=False, calculate_voltage_angles=angles,
             init="dc" if angles else "flat", tolerance_mva=_FLOW_TOLERANCE_MVA, max_iteration=60,
         )  # fmt: skip
-    except (pp.LoadflowNotConverged, FloatingPointError, ZeroDivisionError):
+    except Exception:  # an edited row can make the library raise anything; it has no one base
         if len(at) > 1:
             for half in (slice(0, len(at) // 2), slice(len(at) // 2, None)):
                 shunt, current = (None if part is None else part[half] for part in load)
@@ -169,6 +203,10 @@ def _islands(rows: Rows, source: Any, load: tuple[Any, Any], power: float) -> An
         len(at),
     )
     trafo = rows.trafo.copy()
+    for name in (*_POSITIVE[:-1], "vkr_percent", "pfe_kw", "i0_percent", "shift_degree"):
+        trafo[name] = trafo[name].astype(float)  # text in another row makes a column of objects
+    trafo["parallel"] = trafo["parallel"].astype("uint32")
+    trafo["in_service"] = True
     trafo["hv_bus"] = np.arange(n, dtype="uint32")
     trafo["lv_bus"] = np.arange(n, 2 * n, dtype="uint32")
     net.trafo = trafo

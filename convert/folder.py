@@ -138,6 +138,9 @@ def read_record(folder: Path, edited: bool) -> dict[str, Any]:
         ) from None
     except (OSError, ValueError, KeyError, TypeError):
         raise BranchwrightError([f"{path}: is no record that build has written"]) from None
+    unnamed = [name for name in CONTRACT[:-1] if name not in outputs and (folder / name).exists()]
+    if unnamed and not edited:
+        raise BranchwrightError([f"{folder / name}: {RECORD} does not name it" for name in unnamed])
     missing = [name for name in outputs if not (folder / name).is_file()]
     if missing:
         raise BranchwrightError(

@@ -11,127 +11,138 @@ from dataclasses import replace
 import numpy as np
 
 from .errors import Finding, Severity
-from .plant import Mask, Table
+from .plant import Mask, Plant, Status, Table
 from .quantity import show
 from .standards import COMMON_PRACTICE
 
 Row = Callable[[int], Finding]
-#: prefix of a gathered column -> what the sheet calls the test
-_TESTS = {"oc_": "open_circuit_", "sc_": "short_circuit_", "ohms_": "resistance_"}
+#: a reading that a stated result stands in for -> the key of that result
+_STATED = {"oc_watts": "no_load_loss", "oc_amps": "no_load_current", "sc_watts": "load_loss",
+           "sc_volts": "impedance_voltage"}  # fmt: skip
+_BLOCK = {int(Status.GIVEN): "results", int(Status.ASSUMED): "assume"}
 
 
 def place(units: Table, column: str, row: int) -> str:
     """Return `file:line key` of a reading, as far as the source tells."""
     line = int(units.line[column][row]) if column in units.line else 0
     line = line or int(units.line["row"][row])
-    for short, full in _TESTS.items():
-        column = column.replace(short, full, 1) if column.startswith(short) else column
-    return f"{units.text['file'][row]}:{line} {column.replace('_', ' ')}"
+    key = units.heading.get(column, column.replace("_", " "))
+    block = _BLOCK.get(int(units.status[column][row])) if column in _STATED else None
+    if block and units.text[f"{block}_{_STATED[column]}"][row]:
+        key = f"{block}.{_STATED[column]}"
+    return f"{units.text['file'][row]}:{line} {key}"
 
 
-def each(units: Table, where: Mask, finding: Finding, fill: Row | None = None) -> Iterator[Finding]:
-    """Yield one finding a row of `where`: `finding` with its subject, and what `fill` adds."""
+def at_unit(units: Table, key: str, row: int) -> str:
+    """Return `file:line key` of a key that a unit lacks: the line is the unit's own."""
+    return f"{units.text['file'][row]}:{int(units.line['row'][row])} {key}"
+
+
+def each(units: Table, where: Mask, fill: Row) -> Iterator[Finding]:
+    """Yield one finding a row of `where`, with the unit's name as its subject."""
     for row in np.flatnonzero(where):
-        base = fill(int(row)) if fill else finding
-        yield replace(base, subject=str(units.text["name"][row]))
+        yield replace(fill(int(row)), subject=str(units.text["name"][row]))
 
 
-def printed(units: Table, column: str, row: int) -> str:
-    """Return a reading as printed, or `nothing`."""
-    return str(units.word(column)[row]) or "nothing"
+def printed(units: Table, *columns: str, row: int) -> str:
+    """Return readings as printed, those that are there, separated by commas."""
+    texts = (str(units.word(column)[row]) for column in columns)
+    return ", ".join(text for text in texts if text) or "nothing"
 
 
-def check(units: Table) -> tuple[Mask, list[Finding]]:
+def check(plant: Plant, units: Table) -> tuple[Mask, list[Finding]]:
     """Return (n,) bool, which units may be reduced, and the findings of those that may not."""
     findings: list[Finding] = []
-    passed = np.ones(units.n, dtype=np.bool_)
-    for where, finding, fill in _rules(units):
-        bad = where & passed
-        findings.extend(each(units, bad, finding, fill))
-        passed &= ~where
-    return passed, findings
+    failed = np.zeros(units.n, dtype=np.bool_)
+    for where, fill in (*_missing(units), *_far_from_nominal(plant, units), *_power_factors(units)):
+        findings.extend(each(units, where, fill))
+        failed |= where
+    return ~failed, findings
 
 
-def _rules(units: Table) -> Iterator[tuple[Mask, Finding, Row | None]]:
-    error = Severity.ERROR
-    yield (
-        ~units.has("oc_watts"),
-        Finding(
-            error, "", "no-load-missing", "tests.open_circuit", "nothing",
-            "an open-circuit test, or no_load_loss and no_load_current under results",
-            "no shunt branch: the unit is left out", "add the test, or say it under assume",
-        ),
-        None,
-    )  # fmt: skip
-    yield (
-        ~units.has("sc_watts"),
-        Finding(
-            error, "", "load-loss-missing", "tests.short_circuit", "nothing",
-            "a short-circuit test, or load_loss and impedance_voltage under results",
-            "no series branch: the unit is left out", "add the test, or say it under assume",
-        ),
-        None,
-    )  # fmt: skip
-    yield (
-        ~units.has("sc_temperature"),
-        Finding(
-            error, "", "winding-temperature-missing", "tests.short_circuit.temperature", "nothing",
-            "the winding temperature of the short-circuit test",
-            "resistance cannot be carried to the study's temperature: the unit is left out",
-            "read it from the certificate, or say winding_temperature under assume",
-        ),
-        None,
-    )  # fmt: skip
-    for side in ("hv", "lv"):
-        yield (
-            needs_temperature(units) & ~units.has(f"k_{side}"),
-            Finding(
-                error, "", "metal-missing", f"{side}.metal", "nothing", "copper or aluminium",
-                "the load loss cannot be carried to another temperature: the unit is left out",
-                "state the metal, or say metal under assume",
-            ),
-            None,
-        )  # fmt: skip
-    yield (
-        (units.word("split") == "resistances") & ~separable(units),
-        Finding(
-            error, "", "split-without-resistances", "split", "resistances",
-            "winding resistances of both sides under tests.resistance",
-            "the split cannot be made: the unit is left out", "add them, or leave split out",
-        ),
-        None,
-    )  # fmt: skip
+def _missing(units: Table) -> Iterator[tuple[Mask, Row]]:
+    load, no_load = units.has("sc_watts"), units.has("oc_watts")
+    gates = [
+        (~no_load, "no-load-missing", "tests.open_circuit",
+         "an open-circuit test, or no_load_loss and no_load_current under results",
+         "no shunt branch", "add the test, or say it under assume"),
+        (~load, "load-loss-missing", "tests.short_circuit",
+         "a short-circuit test, or load_loss and impedance_voltage under results",
+         "no series branch", "add the test, or say it under assume"),
+        (load & ~units.has("sc_temperature"), "winding-temperature-missing",
+         "tests.short_circuit.temperature", "the winding temperature of the short-circuit test",
+         "resistance cannot be carried to the study's temperature",
+         "read it from the certificate, or say winding_temperature under assume"),
+        (load & (units.word("split") == "resistances") & ~separable(units),
+         "split-without-resistances", "split",
+         "winding resistances of both sides under tests.resistance", "the split cannot be made",
+         "add them, or leave split out"),
+    ]  # fmt: skip
+    gates += [
+        (needs_temperature(units) & ~units.has(f"k_{side}"), "metal-missing", f"{side}.metal",
+         "copper or aluminium", "the load loss cannot be carried to another temperature",
+         "state the metal, or say metal under assume")
+        for side in ("hv", "lv")
+    ]  # fmt: skip
+    for where, rule, key, expected, effect, mend in gates:
+
+        def fill(row: int, rule: str = rule, key: str = key, expected: str = expected,
+                 effect: str = effect, mend: str = mend) -> Finding:  # fmt: skip
+            return Finding(
+                Severity.ERROR, "", rule, at_unit(units, key, row), "nothing", expected,
+                f"{effect}: the unit is left out", mend,
+            )  # fmt: skip
+
+        yield where, fill
+
+
+def _far_from_nominal(plant: Plant, units: Table) -> Iterator[tuple[Mask, Row]]:
     for side, base in (("hv", "base_from"), ("lv", "base_to")):
         ratio = units[f"u_{side}"] / units[base]
 
-        def far(row: int, side: str = side, base: str = base) -> Finding:
-            rated, nominal = (show(units[c][row], "voltage") for c in (f"u_{side}", base))
+        def far(row: int, side: str = side) -> Finding:
             return Finding(
-                error, "", "rated-against-nominal", place(units, f"{side}_rated_voltage", row),
-                f"rated {rated} on a busbar of {nominal}", "within 0.5 to 1.5 of nominal",
+                Severity.ERROR, "", "rated-against-nominal",
+                place(units, f"{side}_rated_voltage", row),
+                against_nominal(plant, units, side, row), "within 0.5 to 1.5 of nominal",
                 "no load flow can be trusted there: the unit is left out",
                 "the wrong busbar, kV for V, or phase volts for line volts", COMMON_PRACTICE,
             )  # fmt: skip
 
-        yield (ratio <= 0.5) | (ratio >= 1.5), Finding(error, "", ""), far
-    for test, name in (("oc", "open-circuit"), ("sc", "short-circuit")):
-        # at no load a power factor of one within the printed digits is a unit without b; a
-        # short-circuit test with no reactance is none
-        over = units["oc_cosphi_low"] > 1 if test == "oc" else units["sc_cosphi"] >= 1
+        yield (ratio <= 0.5) | (ratio >= 1.5), far
 
-        def fill(row: int, test: str = test, name: str = name) -> Finding:
-            u, i, p = (printed(units, f"{test}_{key}", row) for key in ("volts", "amps", "watts"))
+
+def against_nominal(plant: Plant, units: Table, side: str, row: int) -> str:
+    """Say rated volts and the busbar's, with the volts to neutral where the winding lies there."""
+    rated = show(units[f"u_{side}"][row], "voltage")
+    nominal = plant.busbars["nominal_voltage"][int(units[f"{side}_bus"][row])]
+    text = f"rated {rated} on a busbar of {show(nominal, 'voltage')}"
+    base = units["base_from" if side == "hv" else "base_to"][row]
+    across = units.word(f"{side}_across")[row] == "line and neutral"
+    return text + (f", {show(base, 'voltage', 4)} line to neutral" if across else "")
+
+
+def _power_factors(units: Table) -> Iterator[tuple[Mask, Row]]:
+    # at no load a power factor of one within the printed digits is a unit without b; a
+    # short-circuit test with no reactance is none
+    for test, name, over, limit in (
+        ("oc", "open-circuit", units["oc_cosphi_low"] > 1, "cosφ of at most 1"),
+        ("sc", "short-circuit", units["sc_cosphi"] >= 1, "cosφ below 1"),
+    ):
+
+        def fill(row: int, test: str = test, name: str = name, limit: str = limit) -> Finding:
+            columns = (f"{test}_volts", f"{test}_amps", f"{test}_watts")
             return Finding(
-                error, "", f"{name}-power-factor", place(units, f"{test}_watts", row),
-                f"cosφ = {units[f'{test}_cosphi'][row]:.4g} from {u}, {i}, {p}",
-                "cosφ of at most 1",
-                "no circuit has these readings: the unit is left out",
-                "phase volts or phase amps entered as line values (factor 1.73), "
-                "three phases' watts on one phase's amps, or a factor of 1000",
+                Severity.ERROR, "", f"{name}-power-factor", place(units, f"{test}_watts", row),
+                f"cosφ = {units[f'{test}_cosphi'][row]:.4g} from "
+                + printed(units, *columns, row=row),
+                limit, "no circuit has these readings: the unit is left out",
+                "phase volts or phase amps entered as line values (factor 1.73), three phases' "
+                "watts on one phase's amps, or a factor of 1000",
                 "P = sqrt(m) U I cosφ",
             )  # fmt: skip
 
-        yield over, Finding(error, "", ""), fill
+        yield np.asarray(over, dtype=np.bool_), fill
 
 
 def separable(units: Table) -> Mask:

@@ -15,6 +15,7 @@ from .reduction import metering, open_circuit, resistance
 from .standards import STANDARDS, winding_constant
 
 DEFAULT_TEMPERATURE = 75.0
+_TEST = {"oc": "open_circuit", "sc": "short_circuit"}
 #: factor from printed ohms to ohms per phase of the equivalent star
 _BETWEEN_LINES, _DELTA_WINDING, _STAR_WINDING = 1 / 2, 1 / 3, 1.0
 
@@ -22,7 +23,9 @@ _BETWEEN_LINES, _DELTA_WINDING, _STAR_WINDING = 1 / 2, 1 / 3, 1.0
 def gather(plant: Plant) -> Table:
     """Bring what the reduction needs of each unit into one row: the chosen test, stage and base."""
     source = plant.transformers
-    units = Table(source.n, line=dict(source.line), text=dict(source.text))
+    units = Table(
+        source.n, line=dict(source.line), text=dict(source.text), heading=dict(source.heading)
+    )
     for out, column in (("phases", "phases"), ("clock", "clock"), ("hv_bus", "hv_bus"),
                         ("lv_bus", "lv_bus"), ("u_hv", "hv_rated_voltage"),
                         ("u_lv", "lv_rated_voltage"), ("plate_impedance", "plate_impedance"),
@@ -34,8 +37,6 @@ def gather(plant: Plant) -> Table:
                         ("results_temperature", "results_temperature")):  # fmt: skip
         units.set(out, source[column], source.status[column])
         units.half_digit[out] = source.half_digit.get(column, np.full(source.n, np.nan))
-    for column in ("results_load_loss", "results_impedance_voltage", "plate_impedance"):
-        units.half_digit[column] = source.half_digit[column]
     _stage(plant, units)
     units.put("i_hv", open_circuit.rated_current, s="s", u="u_hv", phases="phases")
     units.put("i_lv", open_circuit.rated_current, s="s", u="u_lv", phases="phases")
@@ -124,6 +125,7 @@ def _test(tests: Table, units: Table, test: str, side: str) -> None:
         if column not in tests.values:
             continue
         out = f"{test}_{column}"
+        units.heading[out] = f"tests.{_TEST[test]}.{column}"
         value, half = np.full(units.n, np.nan), np.full(units.n, np.nan)
         value[rows], half[rows] = tests[column], tests.half_digit[column]
         units.set(out, value)
@@ -162,6 +164,7 @@ def _stated(plant: Plant, units: Table) -> None:
                        "no_load_current"):  # fmt: skip
             name = f"{block}_{column}"
             units.set(name, source[name], source.status[name])
+            units.half_digit[name] = source.half_digit[name]
         base = f"{block}_base"
         for side in ("hv", "lv"):
             out = f"{block}_i_{side}"
@@ -191,10 +194,12 @@ def _stated(plant: Plant, units: Table) -> None:
 
 
 def _cite(units: Table, out: str, column: str, where: Mask) -> None:
-    """Carry text and line of a stated result to the reading that it stands in for."""
+    """Carry text, line and printed digits of a stated result to the reading it stands in for."""
     units.text[out] = np.where(where, units.text[column], units.word(out))
     units.line[out] = np.where(where, units.line[column], units.line[out]).astype(np.int32)
-    units.half_digit[out] = np.where(where, np.nan, units.half_digit[out])
+    with np.errstate(all="ignore"):
+        half = units.half_digit[column] * (units[out] / units[column])
+    units.half_digit[out] = np.where(where, half, units.half_digit[out])
 
 
 def _resistances(plant: Plant, units: Table) -> None:
@@ -205,9 +210,11 @@ def _resistances(plant: Plant, units: Table) -> None:
         mine = tests.word("side") == side
         rows = at[mine]
         for column, out in (("ohms", f"ohms_{side}"), ("temperature", f"t_{side}")):
-            value = np.full(units.n, np.nan)
-            value[rows] = tests[column][mine]
+            value, half = np.full(units.n, np.nan), np.full(units.n, np.nan)
+            value[rows], half[rows] = tests[column][mine], tests.half_digit[column][mine]
             units.set(out, value)
+            units.half_digit[out] = half
+        units.heading[f"ohms_{side}"] = f"tests.resistance.{side}"
         line = np.zeros(units.n, dtype=np.int32)
         line[rows] = tests.line["ohms"][mine]
         units.line[f"ohms_{side}"] = line

@@ -58,6 +58,10 @@ class Table:
         Half the last printed digit of a reading, SI.
     text : dict of (n,) object arrays
         Names, words and readings as printed; empty text where absent.
+    heading : dict of str
+        The key of a column as the planner wrote it, for messages.
+    steps : dict of Step
+        The formulas that made the columns.
     """
 
     n: int
@@ -66,6 +70,7 @@ class Table:
     line: dict[str, NDArray[np.int32]] = field(default_factory=dict)
     half_digit: dict[str, Floats] = field(default_factory=dict)
     text: dict[str, NDArray[np.object_]] = field(default_factory=dict)
+    heading: dict[str, str] = field(default_factory=dict)
     steps: dict[str, Step] = field(default_factory=dict)
 
     def __getitem__(self, column: str) -> NDArray[Any]:
@@ -149,6 +154,7 @@ class Table:
             {name: column[rows] for name, column in self.line.items()},
             {name: column[rows] for name, column in self.half_digit.items()},
             {name: column[rows] for name, column in self.text.items()},
+            dict(self.heading),
             dict(self.steps),
         )
 
@@ -173,6 +179,7 @@ class System:
 
     base_power [VA], frequency [Hz], study_temperature [°C]; load_fractions (1 = rated) and
     power_factors (cosφ, `lagging`, `leading` or `unity`) are the points of the regulation table.
+    written_frequency [Hz] is the sheets' own, where an option says another.
     """
 
     base_power: float = np.nan
@@ -185,6 +192,7 @@ class System:
         (1.0, "unity"),
         (0.9, "leading"),
     )
+    written_frequency: float = np.nan
 
 
 @dataclass

@@ -138,8 +138,8 @@ def _wanted(rows: Rows, mine: DataFrame, test: str, drive: str) -> tuple[Any, An
     side = dict(zip(driven["name"], driven["quantity"].str[:2], strict=True))
     names = rows.trafo["name"]
     return (
-        np.array([0 if side.get(name) == "hv" else 1 for name in names]),
-        np.array([value.get(name, np.nan) for name in names]),
+        np.array([0 if side.get(name) == "hv" else 1 for name in names], dtype=int),
+        np.array([value.get(name, np.nan) for name in names], dtype=float),
     )
 
 
@@ -267,8 +267,8 @@ def _plain_flows(networks: dict[str, Any]) -> DataFrame:
         try:
             pp.runpp(trial, numba=False)
             empty = int(trial.res_bus["vm_pu"][trial.bus["in_service"]].isna().sum())
-        except (pp.LoadflowNotConverged, FloatingPointError):
-            empty = len(trial.bus)
+        except Exception:  # an edited file can make the library raise anything
+            empty = max(1, len(trial.bus))
         rows.append(
             {
                 "name": file,
@@ -313,7 +313,7 @@ def _regulation(rows: Rows, branches: DataFrame, regulation: DataFrame) -> DataF
     keys = ["name", "load_fraction", "power_factor", "sense", "method"]
     parts = []
     for method, value in (("phasor", rise), ("ieee_c57_12_90", rise), ("iec_60076_8", drop)):
-        part = pd.concat([points] * n, ignore_index=True)
+        part = points.iloc[np.tile(np.arange(m), n)].reset_index(drop=True)
         part["name"] = np.repeat(rows.trafo["name"].to_numpy(), m)
         part["method"], part["flow_percent"] = method, value.reshape(-1)
         parts.append(part)

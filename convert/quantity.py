@@ -129,7 +129,7 @@ def parse(text: str, dimension: str) -> Quantity:
     value = float(number) * scale
     if not math.isfinite(value):
         raise QuantityError(expected, "the number is too large to be held")
-    if value < 0 and dimension != "temperature":
+    if number.startswith("-") and dimension != "temperature":
         raise QuantityError(expected, "a magnitude is written without a minus sign")
     return Quantity(value, 0.5 * last_digit(number) * scale)
 
@@ -146,7 +146,7 @@ def _mend_number(text: str, words: tuple[str, ...]) -> str:
         return f"write a decimal point, {text.replace(',', '.', 1)}, and no thousands separator"
     if _SPACED.search(text):
         return "write the number without spaces between its digits"
-    if text.lower().lstrip("+-.") in {"nan", "inf", "infinity"}:
+    if text.lower().lstrip("+-.").partition(" ")[0] in {"nan", "inf", "infinity"}:
         return "a reading is a finite number; leave the key out if there is none"
     if text.lower() in {"true", "false", "yes", "no", "on", "off"}:
         return "a truth value is no reading"
@@ -156,7 +156,7 @@ def _mend_number(text: str, words: tuple[str, ...]) -> str:
 def _mend_unit(number: str, word: str, words: tuple[str, ...]) -> str:
     choice = ", ".join(words)
     if not word:
-        return f"a bare number has no unit: write {number} {words[0]} (units: {choice})"
+        return f"a bare number has no unit: write {number} and its unit, one of {choice}"
     for other in FAMILIES.values():
         if word in other[0]:
             return f"{word} is the unit of {other[2]}: write one of {choice}"

@@ -46,7 +46,8 @@ def parse(text: str) -> VectorGroup:
     if single:
         return make("I", "i", int(single.group(1)))
     match = _TEXT.fullmatch(text.strip())
-    if match is None:
+    # capitals are for the high-voltage side: dYN11 is the two sides in the wrong order
+    if match is None or (match.group(1).islower() and match.group(2).isupper()):
         raise ValueError("a vector group such as YNd11, Dyn1, Yyn0, or Ii0 for a single-phase unit")
     return make(match.group(1).upper(), match.group(2).lower(), int(match.group(3)))
 

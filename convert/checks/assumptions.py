@@ -9,10 +9,10 @@ import numpy as np
 
 from .. import circuit
 from ..errors import Finding, Severity
-from ..gates import at_limit, each, needs_temperature, place, printed, separable
+from ..gates import at_limit, at_unit, each, needs_temperature, place, printed, separable
 from ..plant import Plant, Status, Table
 from ..quantity import show
-from ..standards import COMMON_PRACTICE
+from ..standards import COMMON_PRACTICE, STANDARDS, winding_constant
 
 
 def rules(plant: Plant, units: Table, model: str) -> Iterator[Finding]:
@@ -23,6 +23,7 @@ def rules(plant: Plant, units: Table, model: str) -> Iterator[Finding]:
     yield from _facts(units)
     yield from _no_load_volts(units)
     yield from _mixed(units)
+    yield from _frequency(plant, units)
     if model == "T":
         yield from _exact_row(units)
     else:
@@ -40,16 +41,15 @@ def _watts(value: float) -> str:
 def _temperature(plant: Plant, units: Table) -> Iterator[Finding]:
     def fill(row: int) -> Finding:
         return Finding(
-            Severity.CAUTION, "", "study-temperature-assumed", "system.study_temperature",
+            Severity.CAUTION, "", "study-temperature-assumed",
+            at_unit(units, "reference_temperature", row),
             "no study or reference temperature", "the temperature that the study wants",
             f"75 °C assumed: load loss {_watts(units['pk_study'][row])}, "
             f"{_watts(units['pk_tested'][row])} as tested at {units['t_tested'][row]:g} °C",
             "", "IEC 60076-1:2011, 11.1: 75 °C for liquid-immersed units (from memory)",
         )  # fmt: skip
 
-    yield from each(
-        units, _is(units, "t_study", Status.ASSUMED), Finding(Severity.NOTE, "", ""), fill
-    )
+    yield from each(units, _is(units, "t_study", Status.ASSUMED), fill)
     cold = _is(units, "t_tested", Status.ASSUMED)
 
     def cold_fill(row: int) -> Finding:
@@ -64,39 +64,43 @@ def _temperature(plant: Plant, units: Table) -> Iterator[Finding]:
         )  # fmt: skip
 
     own = units.word("assume_winding_temperature") != ""
-    yield from each(units, cold & own, Finding(Severity.CAUTION, "", ""), cold_fill)
+    yield from each(units, cold & own, cold_fill)
 
 
 def _constants(units: Table) -> Iterator[Finding]:
     moved = needs_temperature(units)
-    unnamed = (units.word("certificate_standard") == "") & moved
     t, t0 = units["t_study"], units["t_tested"]
-    other = units["k_hv"] - 0.5
-    change = (other + t) / (other + t0) / ((units["k_hv"] + t) / (units["k_hv"] + t0)) - 1
+    iec, ieee, aluminium = (
+        winding_constant(*key)
+        for key in ((STANDARDS[0], "copper"), (STANDARDS[1], "copper"), (STANDARDS[0], "aluminium"))
+    )
+    by_ieee = (ieee + t) / (ieee + t0) / ((iec + t) / (iec + t0)) - 1
+    copper = (units["k_hv"] == iec) | (units["k_lv"] == iec)
 
     def fill(row: int) -> Finding:
         return Finding(
-            Severity.NOTE, "", "standard-assumed", "certificate.standard", "no standard named",
-            "IEC 60076-1 or IEEE C57.12.00", "winding constants of IEC practice: the other's "
-            f"copper constant changes I²R by {100 * change[row]:+.2g} %", "",
-            "IEC 60076-1:2011, 11.1 (from memory)",
+            Severity.NOTE, "", "standard-assumed", at_unit(units, "certificate.standard", row),
+            "no standard named", " or ".join(STANDARDS),
+            "winding constants of IEC practice: the other's copper constant changes I²R by "
+            f"{100 * by_ieee[row]:+.2g} %", "", "IEC 60076-1:2011, 11.1 (from memory)",
         )  # fmt: skip
 
-    yield from each(units, unnamed, Finding(Severity.NOTE, "", ""), fill)
-    assumed = moved & ((units.word("hv_metal") == "") | (units.word("lv_metal") == ""))
+    unnamed = (units.word("certificate_standard") == "") & moved & copper
+    yield from each(units, unnamed & (by_ieee != 0), fill)
+    absent = {side: units.word(f"{side}_metal") == "" for side in ("hv", "lv")}
+    by_aluminium = (aluminium + t) / (aluminium + t0) / ((iec + t) / (iec + t0)) - 1
 
     def metal(row: int) -> Finding:
-        word = printed(units, "assume_metal", row)
-        aluminium = (225 + t[row]) / (225 + t0[row])
-        copper = (235 + t[row]) / (235 + t0[row])
+        word = printed(units, "assume_metal", row=row)
+        sides = [side for side in absent if absent[side][row]]
+        change = by_aluminium[row] if word == "copper" else 1 / (1 + by_aluminium[row]) - 1
         return Finding(
             Severity.CAUTION, "", "metal-assumed", place(units, "assume_metal", row),
-            f"assumed {word}", "the metal of both windings",
-            f"the other metal changes I²R by {100 * abs(aluminium / copper - 1):.2g} %", "",
-            "assumed by the sheet",
+            f"assumed {word}", f"the metal of the {' and the '.join(sides)} winding",
+            f"the other metal changes I²R by {100 * change:+.2g} %", "", "assumed by the sheet",
         )  # fmt: skip
 
-    yield from each(units, assumed, Finding(Severity.CAUTION, "", ""), metal)
+    yield from each(units, moved & (absent["hv"] | absent["lv"]), metal)
 
 
 def _not_separated(units: Table) -> Iterator[Finding]:
@@ -106,14 +110,15 @@ def _not_separated(units: Table) -> Iterator[Finding]:
         has = [side for side in ("hv", "lv") if units.has(f"ohms_{side}")[row]]
         found = f"ohms of {has[0]} only" if has else "no winding resistances"
         return Finding(
-            Severity.CAUTION, "", "loss-not-separated", "tests.resistance", found,
+            Severity.CAUTION, "", "loss-not-separated",
+            at_unit(units, "tests.resistance", row), found,
             "winding resistances of both sides",
             f"the whole load loss is carried as I²R: {_watts(upper)}; if all were stray it would "
             f"be {_watts(lower)}", "", "upper bound; IEC 60076-1:2011, Annex E (from memory)",
         )  # fmt: skip
 
     bad = ~separable(units) & (units["t_study"] != units["t_tested"])
-    yield from each(units, bad, Finding(Severity.CAUTION, "", ""), fill)
+    yield from each(units, bad, fill)
 
 
 def _facts(units: Table) -> Iterator[Finding]:
@@ -129,19 +134,17 @@ def _facts(units: Table) -> Iterator[Finding]:
 
             def fill(row: int, block: str = block, name: str = name, second: str = second,
                      severity: Severity = severity, effect: str = effect) -> Finding:  # fmt: skip
-                first = printed(units, f"{block}_{name}", row)
+                first = printed(units, f"{block}_{name}", row=row)
                 verb = "assumed" if block == "assume" else "given"
                 return Finding(
                     severity, "", f"{name.replace('_', '-')}-{verb}",
                     place(units, f"{block}_{name}", row),
-                    f"{first}, {printed(units, f'{block}_{second}', row)} {verb}",
+                    f"{first}, {printed(units, f'{block}_{second}', row=row)} {verb}",
                     "readings of the test", effect, "",
                     "assumed by the sheet" if block == "assume" else "results of the certificate",
                 )  # fmt: skip
 
-            yield from each(
-                units, _is(units, f"{test}_watts", status), Finding(severity, "", ""), fill
-            )
+            yield from each(units, _is(units, f"{test}_watts", status), fill)
 
     def unity(row: int) -> Finding:
         return Finding(
@@ -151,7 +154,7 @@ def _facts(units: Table) -> Iterator[Finding]:
             "i0 or P0 rounded, or i0 filled in from P0", COMMON_PRACTICE,
         )  # fmt: skip
 
-    yield from each(units, at_limit(units), Finding(Severity.CAUTION, "", ""), unity)
+    yield from each(units, at_limit(units), unity)
 
 
 def _no_load_volts(units: Table) -> Iterator[Finding]:
@@ -161,14 +164,14 @@ def _no_load_volts(units: Table) -> Iterator[Finding]:
     def fill(row: int) -> Finding:
         return Finding(
             Severity.NOTE, "", "no-load-not-at-rated-volts", place(units, "oc_volts", row),
-            f"{printed(units, 'oc_volts', row)}, {100 / ratio[row]:.4g} % of rated",
+            f"{printed(units, 'oc_volts', row=row)}, {100 / ratio[row]:.4g} % of rated",
             "readings at rated volts",
             f"linear branch: loss ×{ratio[row] ** 2:.4f}, current ×{ratio[row]:.4f}; a core that "
             "saturates draws more above rated volts", "",
             "linear shunt branch, common practice, no source",
         )  # fmt: skip
 
-    yield from each(units, np.abs(ratio - 1) > digit + 1e-12, Finding(Severity.NOTE, "", ""), fill)
+    yield from each(units, np.abs(ratio - 1) > digit + 1e-12, fill)
 
 
 def _mixed(units: Table) -> Iterator[Finding]:
@@ -180,6 +183,18 @@ def _mixed(units: Table) -> Iterator[Finding]:
             f"branches at {listed} °C", "one winding temperature for the whole study",
             "losses and drops of the units are not comparable", "",
             COMMON_PRACTICE, units.n,
+        )  # fmt: skip
+
+
+def _frequency(plant: Plant, units: Table) -> Iterator[Finding]:
+    """Say that an option's frequency is not the sheets'."""
+    written, used = plant.system.written_frequency, plant.system.frequency
+    if written != used and not np.isnan(written):
+        yield Finding(
+            Severity.CAUTION, "the study", "frequency-by-option", "system.frequency",
+            f"{used:g} Hz by option, {written:g} Hz in the sheet", "one frequency",
+            f"the tests are taken as made at {used:g} Hz: reactances are not carried from "
+            f"{written:g} Hz", "", COMMON_PRACTICE, units.n,
         )  # fmt: skip
 
 
@@ -213,4 +228,4 @@ def _cantilever(units: Table) -> Iterator[Finding]:
             "shunt at the from terminals, two-port theory",
         )  # fmt: skip
 
-    yield from each(units, np.ones(units.n, dtype=np.bool_), Finding(Severity.NOTE, "", ""), fill)
+    yield from each(units, np.ones(units.n, dtype=np.bool_), fill)

@@ -9,8 +9,8 @@ from typing import Any
 import numpy as np
 
 from ..errors import Finding, Severity
-from ..gates import each, place, printed, separable
-from ..plant import Plant, Table
+from ..gates import against_nominal, at_unit, each, place, printed, separable
+from ..plant import Plant, Status, Table
 from ..quantity import show
 from ..reduction import temperature
 from ..standards import COMMON_PRACTICE, STANDARDS, impedance_tolerance
@@ -21,25 +21,28 @@ NOMINAL_BAND = 0.10
 STRAY_SHARE = 0.60
 #: three readings of one balanced test may differ by this share of their mean
 SPREAD = 0.02
+#: a factor is recognised within this share of it
+NEAR = 0.03
 _ROOT3 = math.sqrt(3.0)
-#: factors that a slip leaves behind in an impedance, and the slip
+#: factors that a slip leaves behind in an impedance from a short-circuit test, and the slip
 _SLIPS = (
-    (_ROOT3, "winding amps of a delta entered as line amps, or line volts entered twice (√3)"),
+    (_ROOT3, "winding amps of a delta entered as line amps, or line volts said to be to neutral "
+             "(√3)"),
     (1 / _ROOT3, "phase volts entered as line volts (√3)"),
-    (3.0, "ohms of a delta winding taken as star ohms, or a factor of 3"),
-    (1 / 3.0, "star ohms taken as a delta winding's, or a factor of 3"),
-    (1.2, "reactance at 60 Hz taken for 50 Hz"),
-    (1 / 1.2, "reactance at 50 Hz taken for 60 Hz"),
+    (3.0, "the rating of three units on one unit's readings (3)"),
+    (1 / 3.0, "the rating of one unit on the readings of three (3)"),
+    (1.2, "a test at 60 Hz against a plate at 50 Hz"),
+    (1 / 1.2, "a test at 50 Hz against a plate at 60 Hz"),
     (10.0, "a decimal point moved"),
     (0.1, "a decimal point moved"),
-)
+)  # fmt: skip
 
 
 def rules(plant: Plant, units: Table) -> Iterator[Finding]:
     """Yield the findings of every rule of this file."""
     yield from _stray(units)
     yield from _plate(plant, units)
-    yield from _nominal(units)
+    yield from _nominal(plant, units)
     yield from _stated(units)
     yield from _spread(units)
 
@@ -50,11 +53,13 @@ def _stray(units: Table) -> Iterator[Finding]:
 
     def fill(row: int) -> Finding:
         high = share[row] > 0
-        ohmic = show(units["p_hv_tested"][row] + units["p_lv_tested"][row], "active_power", 4)
-        total = show(units["pk_tested"][row], "active_power", 4)
+        loss = {c: show(units[c][row], "active_power", 4) for c in
+                ("p_hv_tested", "p_lv_tested", "pk_tested")}  # fmt: skip
         return Finding(
-            Severity.CAUTION, "", "stray-loss", place(units, "ohms_hv", row),
-            f"stray loss {100 * share[row]:.1f} % of the load loss: I²R {ohmic} of {total}",
+            Severity.CAUTION, "", "stray-loss",
+            "; ".join(place(units, c, row) for c in ("sc_watts", "ohms_hv", "ohms_lv")),
+            f"stray loss {100 * share[row]:.1f} % of the load loss: I²R HV {loss['p_hv_tested']}, "
+            f"LV {loss['p_lv_tested']}, load loss {loss['pk_tested']}",
             f"0 to {100 * STRAY_SHARE:g} %",
             "the load loss is carried to the study's temperature with a wrong split",
             "resistance in mΩ entered as µΩ, or one side's reading a factor too small" if high
@@ -64,7 +69,7 @@ def _stray(units: Table) -> Iterator[Finding]:
         )  # fmt: skip
 
     bad = separable(units) & ((share < 0) | (share > STRAY_SHARE))
-    yield from each(units, bad, Finding(Severity.CAUTION, "", ""), fill)
+    yield from each(units, bad, fill)
 
 
 def _plate(plant: Plant, units: Table) -> Iterator[Finding]:
@@ -80,20 +85,27 @@ def _plate(plant: Plant, units: Table) -> Iterator[Finding]:
     def fill(row: int) -> Finding:
         return Finding(
             Severity.CAUTION, "", "plate-impedance", place(units, "sc_volts", row),
-            f"{100 * measured[row]:.4g} % from {printed(units, 'sc_volts', row)} at "
-            f"{printed(units, 'sc_amps', row)}, {100 * (ratio[row] - 1):+.1f} % off the plate",
-            f"the plate's {printed(units, 'plate_impedance', row)} ± {100 * tolerance[row]:g} %",
-            f"drop and fault level change by about {100 * (ratio[row] - 1):+.0f} %",
+            f"{100 * measured[row]:.4g} % from "
+            f"{printed(units, 'sc_volts', 'sc_amps', row=row)}, {100 * (ratio[row] - 1):+.1f} % "
+            "off the plate",
+            f"the plate's {printed(units, 'plate_impedance', row=row)} ± "
+            f"{100 * tolerance[row]:g} %",
+            f"drop {100 * (ratio[row] - 1):+.0f} %, fault level {100 * (1 / ratio[row] - 1):+.0f} %"
+            " against the plate",
             likely_slip(float(ratio[row]), stages.get(str(units.text["name"][row]), ())),
             f"{named[row]}, tolerance on the short-circuit impedance (from memory)",
         )  # fmt: skip
 
     bad = units.has("plate_impedance") & (np.abs(ratio - 1) > tolerance)
-    yield from each(units, bad, Finding(Severity.CAUTION, "", ""), fill)
-    unnamed = Finding(
-        Severity.NOTE, "", "plate-not-compared", "certificate.standard", "no standard named",
-        "the standard whose tolerance the plate impedance must meet", "one comparison is left out",
-    )  # fmt: skip
+    yield from each(units, bad, fill)
+
+    def unnamed(row: int) -> Finding:
+        return Finding(
+            Severity.NOTE, "", "plate-not-compared", at_unit(units, "certificate.standard", row),
+            "no standard named", "the standard whose tolerance the plate impedance must meet",
+            "the readings are not held against the plate", "", COMMON_PRACTICE,
+        )  # fmt: skip
+
     yield from each(units, units.has("plate_impedance") & (named == ""), unnamed)
 
 
@@ -110,29 +122,30 @@ def _stage_ratios(plant: Plant) -> dict[str, tuple[float, ...]]:
 
 
 def likely_slip(ratio: float, stage_ratios: tuple[float, ...] = ()) -> str:
-    """Return the slips whose factor is within 3 % of `ratio`, nearest first; empty if none."""
+    """Return the slips whose factor is near `ratio`, nearest first; empty if none."""
     known = [*_SLIPS, *((r, "another cooling stage's rating as base") for r in stage_ratios)]
     near = sorted((abs(math.log(ratio / factor)), text) for factor, text in known)
-    return "; or ".join(dict.fromkeys(text for size, text in near if size < 0.03))
+    return "; or ".join(dict.fromkeys(text for size, text in near if size < NEAR))
 
 
-def _nominal(units: Table) -> Iterator[Finding]:
+def _nominal(plant: Plant, units: Table) -> Iterator[Finding]:
     for side, base in (("hv", "base_from"), ("lv", "base_to")):
         ratio = units[f"u_{side}"] / units[base]
 
-        def fill(row: int, side: str = side, base: str = base, ratio: Any = ratio) -> Finding:
+        def fill(row: int, side: str = side, ratio: Any = ratio) -> Finding:
+            root = abs(abs(math.log(ratio[row])) - math.log(_ROOT3)) < NEAR
+            cause = (
+                "phase volts for line volts" if root else "the wrong busbar, or a figure mistyped"
+            )
             return Finding(
                 Severity.CAUTION, "", "rated-against-nominal",
                 place(units, f"{side}_rated_voltage", row),
-                f"rated {show(units[f'u_{side}'][row], 'voltage')} on a busbar of "
-                f"{show(units[base][row], 'voltage')}: {ratio[row]:.4g} of nominal",
+                f"{against_nominal(plant, units, side, row)}: {ratio[row]:.4g} of nominal",
                 f"within {100 * NOMINAL_BAND:g} % of nominal",
-                f"the impedance base moves by {ratio[row] ** 2:.3g}",
-                "phase volts for line volts, or the wrong busbar", COMMON_PRACTICE,
+                f"the impedance base moves by {ratio[row] ** 2:.3g}", cause, COMMON_PRACTICE,
             )  # fmt: skip
 
-        bad = np.abs(ratio - 1) > NOMINAL_BAND
-        yield from each(units, bad, Finding(Severity.CAUTION, "", ""), fill)
+        yield from each(units, np.abs(ratio - 1) > NOMINAL_BAND, fill)
 
 
 def _relative_half(units: Table, test: str, **powers: float) -> Any:
@@ -147,25 +160,15 @@ def _relative_half(units: Table, test: str, **powers: float) -> Any:
 
 def _stated(units: Table) -> Iterator[Finding]:
     """Compare results that the certificate states with what its readings give."""
-    t = units["results_temperature"]
-    with np.errstate(all="ignore"):
-        parts = [
-            temperature.ohmic_loss_at_temperature(
-                units[f"p_{side}_tested"], units["t_tested"], t, units[f"k_{side}"]
-            )
-            for side in ("hv", "lv")
-        ]
-        stray = temperature.stray_loss_at_temperature(
-            units["p_stray_tested"], units["t_tested"], t, units["k_stray"]
-        )
-    p_k = np.where(t == units["t_tested"], units["pk_tested"], sum(parts) + stray)
     share = units["results_base"] / units["s"]
+    p_k, digits = _carried(units)
+    load = _relative_half(units, "sc", watts=1, amps=2) + digits
     z = np.hypot(p_k / units["s"], units["x"])
-    load = _relative_half(units, "sc", watts=1, amps=2)
+    r_part = (p_k / units["s"] / z) ** 2  # how much of a change in r is felt in z
+    impedance = _relative_half(units, "sc", volts=1, amps=1) + r_part * load
     for column, value, half, dimension, test in (
         ("load_loss", p_k * share**2, load, "active_power", "sc"),
-        ("impedance_voltage", z * share, _relative_half(units, "sc", volts=1, amps=1), "ratio",
-         "sc"),
+        ("impedance_voltage", z * share, impedance, "ratio", "sc"),
         ("no_load_loss", units["p0"], _relative_half(units, "oc", watts=1, volts=2),
          "active_power", "oc"),
         ("no_load_current", units["i0"] / share, _relative_half(units, "oc", amps=1, volts=1),
@@ -174,21 +177,50 @@ def _stated(units: Table) -> Iterator[Finding]:
         stated = units[f"results_{column}"]
         own = np.nan_to_num(units.half_digit[f"results_{column}"] / stated)
         off = value / stated - 1
-        measured = ~np.isnan(units.half_digit[f"{test}_watts"])
+        measured = units.status[f"{test}_watts"] == Status.MEASURED
 
         def fill(row: int, column: str = column, value: Any = value, off: Any = off,
                  dimension: str = dimension) -> Finding:  # fmt: skip
             return Finding(
                 Severity.CAUTION, "", "stated-result", place(units, f"results_{column}", row),
-                f"{printed(units, f'results_{column}', row)} stated",
+                f"{printed(units, f'results_{column}', row=row)} stated",
                 f"{show(value[row], dimension, 5)} from the readings ({100 * off[row]:+.2f} %)",
                 "the branch follows the readings",
                 "a reading mistyped, another temperature, or another base",
                 "readings and results of one certificate agree within their printed digits",
             )  # fmt: skip
 
-        bad = measured & (np.abs(off) > own + half)
-        yield from each(units, bad, Finding(Severity.CAUTION, "", ""), fill)
+        yield from each(units, measured & (np.abs(off) > own + half), fill)
+
+
+def _carried(units: Table) -> tuple[Any, Any]:
+    """Load loss [W] at the results' temperature, and how far its printed digits leave it open.
+
+    Without resistances it lies anywhere between all I²R and all stray.
+    """
+    t, tested = units["results_temperature"], units["t_tested"]
+    total, stray = units["pk_tested"], units["p_stray_tested"]
+    with np.errstate(all="ignore"):
+        sides = {
+            side: temperature.ohmic_loss_at_temperature(
+                units[f"p_{side}_tested"], tested, t, units[f"k_{side}"]
+            )
+            for side in ("hv", "lv")
+        }
+        moved_stray = temperature.stray_loss_at_temperature(stray, tested, t, units["k_stray"])
+        p_k = np.where(t == tested, total, sum(sides.values()) + moved_stray)
+        factor = (units["k_stray"] + t) / (units["k_stray"] + tested)
+        # a warmer test means less to carry: I²R by 1/(K + θ), stray the other way
+        kelvin = np.nan_to_num(units.half_digit["sc_temperature"]) / (units["k_stray"] + tested)
+        digits = np.abs(total - 2 * stray) / total * kelvin
+        for side in ("hv", "lv"):
+            part = units[f"p_{side}_tested"] / total
+            ohms = units.half_digit[f"ohms_{side}"] / units[f"ohms_{side}"]
+            cold = units.half_digit[f"t_{side}"] / (units[f"k_{side}"] + units[f"t_{side}"])
+            digits = digits + np.abs(factor - 1 / factor) * part * np.nan_to_num(ohms + cold)
+        open_split = ~separable(units) & (t != tested)
+        digits = np.where(open_split, np.abs(1 - factor**-2) + digits, digits)
+    return p_k, np.nan_to_num(digits)
 
 
 def _spread(units: Table) -> Iterator[Finding]:
@@ -198,10 +230,10 @@ def _spread(units: Table) -> Iterator[Finding]:
         def fill(row: int, column: str = column, spread: Any = spread) -> Finding:
             return Finding(
                 Severity.CAUTION, "", "three-readings", place(units, column, row),
-                f"{printed(units, column, row)}: {100 * spread[row]:.1f} % apart",
+                f"{printed(units, column, row=row)}: {100 * spread[row]:.1f} % apart",
                 f"within {100 * SPREAD:g} % of each other",
                 "the mean is used", "one of the three mistyped, or an unbalanced supply",
                 COMMON_PRACTICE,
             )  # fmt: skip
 
-        yield from each(units, spread > SPREAD, Finding(Severity.CAUTION, "", ""), fill)
+        yield from each(units, spread > SPREAD, fill)

@@ -17,12 +17,16 @@ from typing import Any
 
 import yaml
 
-from ..errors import Problem
+from ..errors import Problem, printable
 from .fields import layout, node_at, schema
 
 MAX_BYTES = 8_000_000
 MAX_DEPTH = 12
 MAX_NODES = 400_000
+#: YAML's own printable characters, less line ends that it would not count
+_UNPRINTABLE = re.compile(
+    "[^\\t\\n\\r\\x20-\\x7e\\xa0-\\u2027\\u202f-\\ud7ff\\ue000-\\ufefe\\uff00-\\ufffd\\U00010000-\\U0010ffff]"
+)
 _INTEGER = re.compile(r"[+-]?[0-9]{1,9}")
 Place = tuple[str | int, ...]
 _Loader: Any = getattr(yaml, "CSafeLoader", yaml.SafeLoader)
@@ -46,7 +50,8 @@ class Document:
 
     def report(self, place: Place, read: str, expected: str, mend: str = "") -> None:
         """Add a problem at a place of the tree."""
-        key = ".".join(str(part + 1) if isinstance(part, int) else part for part in place)
+        parts = (str(part + 1) if isinstance(part, int) else _short(part) for part in place)
+        key = ".".join(parts)
         self.problems.append(Problem(self.name, self.line(place), key, read, expected, mend))
 
 
@@ -56,8 +61,8 @@ def load(path: Path) -> Document:
     try:
         with path.open("rb") as handle:
             data = handle.read(MAX_BYTES + 1)
-    except OSError as error:
-        reason = (error.strerror or type(error).__name__).lower()
+    except (OSError, ValueError) as error:  # a name with a nul byte is a ValueError
+        reason = (getattr(error, "strerror", None) or str(error)).lower()
         document.problems.append(
             Problem(document.name, None, "", reason, "a station sheet that can be read")
         )
@@ -76,21 +81,28 @@ def load(path: Path) -> Document:
             )
         )
         return document
+    odd = _UNPRINTABLE.search(text)
+    if odd:
+        at = text.count("\n", 0, odd.start()) + 1
+        read = f"the control character U+{ord(odd.group()):04X}"
+        document.problems.append(Problem(document.name, at, "", read, "printable text"))
+        return document
     try:
-        _check_events(text, document)
-        if not document.problems:
+        if _check_events(text, document):
             node = yaml.compose(text, Loader=_Loader)
             document.tree = "" if node is None else _plain(node, (), (), document)
             document.lines.setdefault((), 1)
     except (yaml.YAMLError, RecursionError) as error:
         document.problems.append(_yaml_problem(document.name, error))
-    if not document.problems or document.tree is not None:
+    if document.tree is not None:
         _check_structure(document)
     return document
 
 
 def _yaml_problem(name: str, error: Exception) -> Problem:
     mark = getattr(error, "problem_mark", None)
+    if "quoted scalar" in str(getattr(error, "context", "")):
+        mark = getattr(error, "context_mark", mark)  # where the quotation begins, not the end
     what = getattr(error, "problem", None) or str(error).splitlines()[0]
     return Problem(
         name,
@@ -102,18 +114,23 @@ def _yaml_problem(name: str, error: Exception) -> Problem:
     )
 
 
-def _check_events(text: str, document: Document) -> None:
-    """Refuse anchors, aliases and tags, and bound depth and size before a tree is made."""
+def _check_events(text: str, document: Document) -> bool:
+    """Refuse anchors, aliases and tags, and bound depth and size before a tree is made.
+
+    Returns whether a tree may be made: aliases could make it grow without end.
+    """
     depth = 0
+    safe = True
     events: Iterator[Any] = yaml.parse(text, Loader=_Loader)
     for count, event in enumerate(events):
         line = event.start_mark.line + 1
         refused = ""
         if isinstance(event, yaml.AliasEvent):
             refused = f"the alias *{event.anchor}"
+            safe = False
         elif getattr(event, "anchor", None):
             refused = f"the anchor &{event.anchor}"
-        elif getattr(event, "tag", None) not in (None, "!"):
+        elif getattr(event, "tag", None):
             refused = f"the tag {event.tag}"
         if refused:
             problem = Problem(document.name, line, "", refused, "plain text", "write the value out")
@@ -126,7 +143,8 @@ def _check_events(text: str, document: Document) -> None:
             over = f"more than {MAX_DEPTH} levels" if depth > MAX_DEPTH else "too many entries"
             limit = f"at most {MAX_DEPTH} levels and {MAX_NODES} entries"
             document.problems.append(Problem(document.name, line, "", over, limit))
-            return
+            return False
+    return safe
 
 
 def _plain(node: yaml.Node, place: Place, generic: tuple[str, ...], document: Document) -> Any:
@@ -150,6 +168,10 @@ def _plain(node: yaml.Node, place: Place, generic: tuple[str, ...], document: Do
                 )
                 continue
             below = (*place, key)
+            if _UNPRINTABLE.search(key):
+                document.lines[below] = line
+                document.report(below, "a key with a control character", "printable text")
+                continue
             if key in tree:
                 first = document.lines[below]
                 document.lines[below] = line
@@ -161,6 +183,9 @@ def _plain(node: yaml.Node, place: Place, generic: tuple[str, ...], document: Do
             tree[key] = _plain(child, below, named, document)
         return tree
     text = str(node.value)
+    if _UNPRINTABLE.search(text):
+        document.report(place, "a value with a control character", "printable text")
+        text = printable(text)
     found = layout().fields.get(generic)
     return int(text) if found and found.integer and _INTEGER.fullmatch(text) else text
 
@@ -188,7 +213,7 @@ def _unknown(document: Document, place: Place, error: Any) -> None:
             near = get_close_matches(key, words, 1, 0.6)
             mend = f"did you mean {near[0]}?" if near else ""
             expected = "one of " + ", ".join(words)
-            document.report((*place, key), f"the unknown key {key!r}", expected, mend)
+            document.report((*place, key), f"the unknown key {_short(key)!r}", expected, mend)
 
 
 def _missing(document: Document, place: Place, error: Any) -> None:
@@ -267,6 +292,10 @@ def _what(value: Hashable | list[Any] | dict[str, Any]) -> str:
     if isinstance(value, list):
         return "a list"
     return "nothing" if value == "" else repr(str(value)[:60])
+
+
+def _short(text: str) -> str:
+    return text if len(text) <= 64 else text[:63] + "…"
 
 
 def _lower(text: str) -> str:

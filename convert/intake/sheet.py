@@ -127,7 +127,7 @@ def _read_field(document: Document, tree: Any, place: Place, spec: Field, row: R
             continue
         if _within(quantity, spec, document, here, str(part)):
             read.append(quantity)
-    if len(read) == len(parts):
+    if read and len(read) == len(parts):
         row.number[spec.column] = _combine(read, spec.combine)
         mean = sum(q.value for q in read) / len(read)
         row.spread[spec.column] = (
@@ -161,6 +161,8 @@ def _system(rows: Sequence[Row], options: System) -> System:
     """Join the sheets' systems; a difference is a fault unless the option decides it."""
     for column in ("base_power", "frequency", "study_temperature"):
         given = [row for row in rows if column in row.number]
+        if column == "frequency" and given:
+            options.written_frequency = given[0].number[column].value
         if not math.isnan(getattr(options, column)) or not given:
             continue
         first = given[0]
@@ -224,6 +226,8 @@ def _table(name: str, rows: Sequence[Row], documents: Sequence[Document]) -> Tab
         if spec.table != name:
             continue
         column = spec.column
+        head = 2 if name == "transformers" else len(spec.path) - 1
+        table.heading[column] = ".".join(spec.path[head:])
         table.text[column] = _texts(row.text.get(column, "") for row in rows)
         table.line[column] = _lines(
             row.document.line(row.places[column]) if column in row.places else 0 for row in rows

@@ -76,8 +76,8 @@ def impedance_tolerance(standard: str, stated: Any) -> Any:
     result = np.full(percent.shape, np.nan)
     for row in table("impedance_tolerance"):
         if row["standard"] == standard:
-            inside = (percent >= float(row["from_percent"])) & (
-                percent < float(row["below_percent"])
-            )
-            result = np.where(inside, float(row["tolerance_percent"]) / 100.0, result)
+            limit = float(row["to_percent"])
+            held = (percent <= limit) if row["to_included"] == "yes" else (percent < limit)
+            tolerance = float(row["tolerance_percent"]) / 100.0
+            result = np.where(np.isnan(result) & held, tolerance, result)
     return result
