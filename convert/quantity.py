@@ -46,10 +46,11 @@ percent = 0.01 * pu
 """
 #: pint rewrites these signs before it looks a unit up; it is given plain letters instead
 _PLAIN = str.maketrans({"Ω": "ohm", "µ": "u", "°": "deg", "%": "percent"})
-NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
+NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,2})?"
 ROOT_THREE = r"\s*/\s*(?:√\s*3|sqrt\(3\))"
 _TEXT = re.compile(rf"({NUMBER})({ROOT_THREE})?\s*([^\s\d.,+\-/*^()]*)")
 _COMMA = re.compile(r"[+-]?\d+,\d+")
+_HUGE = re.compile(r"[+-]?[\d.]+[eE][+-]?\d{3,}")
 _SPACED = re.compile(r"\d[\s'_]+\d")
 #: both code points of micro and of ohm are read
 _SAME = str.maketrans({"μ": "µ", "\u2126": "Ω", "−": "-", "\u00a0": " "})
@@ -138,12 +139,14 @@ def last_digit(number: str) -> float:
     """Return the place value of the last printed digit: `5.20` -> 0.01, `1.5e3` -> 100.0."""
     mantissa, _, exponent = number.lower().partition("e")
     decimals = len(mantissa.partition(".")[2])
-    return float(10.0 ** (int(exponent or 0) - decimals))
+    return float(f"1e{int(exponent or 0) - decimals}")
 
 
 def _mend_number(text: str, words: tuple[str, ...]) -> str:
     if _COMMA.match(text):
         return f"write a decimal point, {text.replace(',', '.', 1)}, and no thousands separator"
+    if _HUGE.match(text):
+        return "the number is too large or too small to be held"
     if _SPACED.search(text):
         return "write the number without spaces between its digits"
     if text.lower().lstrip("+-.").partition(" ")[0] in {"nan", "inf", "infinity"}:
@@ -156,7 +159,7 @@ def _mend_number(text: str, words: tuple[str, ...]) -> str:
 def _mend_unit(number: str, word: str, words: tuple[str, ...]) -> str:
     choice = ", ".join(words)
     if not word:
-        return f"a bare number has no unit: write {number} and its unit, one of {choice}"
+        return f"a bare number has no unit: write {number} and one of {choice}"
     for other in FAMILIES.values():
         if word in other[0]:
             return f"{word} is the unit of {other[2]}: write one of {choice}"

@@ -12,7 +12,7 @@ from typing import NamedTuple
 
 
 class Branch(NamedTuple):
-    """A row: name, busbars, base [MVA; kV from, to], and Y in per unit, rows and columns from, to."""
+    """A row: name, busbars, base [MVA; kV from, to], and Y in per unit (from, to)."""
 
     name: str
     ends: tuple[str, str]

@@ -41,6 +41,7 @@ class Document:
     tree: Any = None
     lines: dict[Place, int] = field(default_factory=dict)
     problems: list[Problem] = field(default_factory=list)
+    faults: set[Place] = field(default_factory=set)
 
     def line(self, place: Place) -> int | None:
         """Return the line of a key, or of the nearest one above it."""
@@ -48,11 +49,19 @@ class Document:
             place = place[:-1]
         return self.lines.get(place)
 
-    def report(self, place: Place, read: str, expected: str, mend: str = "") -> None:
+    def faulty(self, place: Place) -> bool:
+        """Return whether a problem stands at a place or above it: what follows from it is noise."""
+        return any(place[:end] in self.faults for end in range(1, len(place) + 1))
+
+    def report(
+        self, place: Place, read: str, expected: str, mend: str = "", line: int | None = None
+    ) -> None:
         """Add a problem at a place of the tree."""
+        self.faults.add(place)
         parts = (str(part + 1) if isinstance(part, int) else _short(part) for part in place)
         key = ".".join(parts)
-        self.problems.append(Problem(self.name, self.line(place), key, read, expected, mend))
+        line = line or self.line(place)
+        self.problems.append(Problem(self.name, line, key, read, expected, mend))
 
 
 def load(path: Path) -> Document:
@@ -104,6 +113,9 @@ def _yaml_problem(name: str, error: Exception) -> Problem:
     if "quoted scalar" in str(getattr(error, "context", "")):
         mark = getattr(error, "context_mark", mark)  # where the quotation begins, not the end
     what = getattr(error, "problem", None) or str(error).splitlines()[0]
+    if "another document" in what and mark:
+        one = "one sheet in a file"
+        return Problem(name, mark.line + 1, "", "a second document", one, "make a file of each")
     return Problem(
         name,
         mark.line + 1 if mark else None,
@@ -168,15 +180,9 @@ def _plain(node: yaml.Node, place: Place, generic: tuple[str, ...], document: Do
                 )
                 continue
             below = (*place, key)
-            if _UNPRINTABLE.search(key):
-                document.lines[below] = line
-                document.report(below, "a key with a control character", "printable text")
-                continue
             if key in tree:
-                first = document.lines[below]
-                document.lines[below] = line
-                document.report(below, f"the key again (first on line {first})", "each key once",
-                                "keep one of the two")  # fmt: skip
+                again = f"the key again (first on line {document.lines[below]})"
+                document.report(below, again, "each key once", "keep one of the two", line)
                 continue
             document.lines[below] = line
             named = (*generic, key) if (*generic, key) in known else (*generic, "*")
@@ -246,18 +252,33 @@ def _type(document: Document, place: Place, error: Any) -> None:
 
 
 def _enum(document: Document, place: Place, error: Any) -> None:
+    if error.schema.get("type") == "integer" and not isinstance(error.instance, int):
+        return  # told as a matter of type
     words = [str(word) for word in error.validator_value]
     given = str(error.instance)
     near = [w for w in words if w.lower() == given.lower()]
     near = near or get_close_matches(given, words, 1, 0.6)
     mend = f"did you mean {near[0]}?" if near else ""
-    document.report(place, _what(error.instance), "one of " + ", ".join(words), mend)
+    about = _lower(error.schema.get("description", ""))
+    expected = f"one of {', '.join(words)}" if len(words) > 1 else f"{words[0]}: {about}"
+    document.report(place, _what(error.instance), expected, mend)
 
 
 def _count(document: Document, place: Place, error: Any) -> None:
-    low, high = error.schema.get("minItems"), error.schema.get("maxItems")
-    few = f"{low}" if low == high else f"{low} to {high}"
-    document.report(place, f"{len(error.instance)} entries", f"a list of {few}")
+    """Lists, mappings and texts of the wrong length."""
+    kind = re.sub("min|max", "", str(error.validator))
+    low, high = error.schema.get(f"min{kind}", 0), error.schema.get(f"max{kind}")
+    span = f"{low}" if low == high else f"{low} to {high}"
+    size = len(error.instance)
+    words = {"Items": "entries", "Properties": "entries", "Length": "characters"}
+    read = f"{size} {words[kind]}" if size or kind != "Length" else "nothing"
+    of = "a list of " if kind == "Items" else ""
+    document.report(place, read, of + (span if kind == "Items" else f"{span} {words[kind]}"))
+
+
+def _range(document: Document, place: Place, error: Any) -> None:
+    low, high = error.schema.get("minimum"), error.schema.get("maximum")
+    document.report(place, _what(error.instance), f"a whole number from {low} to {high}")
 
 
 def _pattern(document: Document, place: Place, error: Any) -> None:
@@ -282,6 +303,12 @@ _STRUCTURE: Mapping[str, Any] = {
     "enum": _enum,
     "minItems": _count,
     "maxItems": _count,
+    "minProperties": _count,
+    "maxProperties": _count,
+    "minLength": _count,
+    "maxLength": _count,
+    "minimum": _range,
+    "maximum": _range,
     "pattern": _pattern,
 }
 

@@ -112,6 +112,7 @@ def _read_field(document: Document, tree: Any, place: Place, spec: Field, row: R
     if not all(isinstance(part, (str, int)) for part in parts):
         return  # the schema has said so
     row.text[spec.column] = ", ".join(map(str, parts))
+    row.readings[spec.column] = len(parts)
     if spec.dimension is None:
         if spec.integer and isinstance(tree, int):
             row.number[spec.column] = Quantity(float(tree), 0.0)
@@ -174,11 +175,12 @@ def _system(rows: Sequence[Row], options: System) -> System:
                 )
         setattr(options, column, first.number[column].value)
     for column in ("load_fractions", "power_factors"):
-        lists = {row.text[column]: row for row in rows if row.text.get(column)}
-        for text in list(lists)[1:]:
-            lists[text].report(column, f"{next(iter(lists))} as in the first sheet")
-        for text in list(lists)[:1]:
-            setattr(options, column, _points(column, text))
+        lists = {_points(column, row.text[column]): row for row in rows if row.text.get(column)}
+        for points in list(lists)[1:]:
+            said = next(iter(lists.values())).text[column]
+            lists[points].report(column, f"{said} as in the first sheet")
+        for points in list(lists)[:1]:
+            setattr(options, column, points)
     return options
 
 

@@ -34,6 +34,7 @@ def _entry(key: str, node: dict[str, Any], depth: int, required: bool) -> Iterat
     yield from _comment(node, pad, required)
     example = next(iter(node.get("examples", ())), None)
     if example is not None and (required or node.get("x-start", True)):
+        yield from _inner(node, pad)
         yield from _value(key, example, pad)
     elif "properties" in node and node.get("x-start", True):
         yield f"{pad}{key}:"
@@ -57,9 +58,23 @@ def _entry(key: str, node: dict[str, Any], depth: int, required: bool) -> Iterat
         lines[first] = f"{pad}  - {lines[first].strip()}"
         yield from lines
     else:
+        yield from _inner(node, pad)
         yield f"{pad}# {key}: {_hint(node)}"
         for name, below in node.get("properties", {}).items():
             yield f"{pad}#   {name}: {_hint(resolve(below))}"
+
+
+def _inner(node: dict[str, Any], pad: str) -> Iterator[str]:
+    """Explain the keys below a key whose example is written in one piece."""
+    named = node.get("additionalProperties")
+    below = resolve(named) if isinstance(named, dict) else node
+    below = resolve(node["items"]) if "items" in node else below
+    if below is not node and "properties" not in below and "x-dimension" not in node:
+        yield from _comment(below, pad, True)
+    for name, child in below.get("properties", {}).items():
+        text = f"{name}: {resolve(child).get('description', '')}"
+        lines = textwrap.wrap(text, WIDTH - len(pad) - 4)
+        yield from (f"{pad}#   {line}" for line in lines)
 
 
 def _comment(node: dict[str, Any], pad: str, required: bool) -> Iterator[str]:
