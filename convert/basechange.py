@@ -19,9 +19,9 @@ NUMBERS = ("base_mva", "base_kv_from", "base_kv_to", "rated_kv_from", "rated_kv_
            "r_pu", "x_pu", "g_pu", "b_pu", "ratio_pu", "phases")  # fmt: skip
 _POSITIVE = (*NUMBERS[:6], "ratio_pu")
 EXTRAS = ("own", "ohm", "percent")
-#: a single-phase branch lies line to line or line to neutral: its base against the busbar's volts
-#: tells which, as long as the busbar moves by less than this share
-_MOST_MOVED = 0.25
+_HEADINGS = ["busbar", "nominal_voltage", "was"]
+#: a busbar's old and new nominal volts [V]; the old ones NaN where the file does not say
+Volts = tuple[float, float]
 
 
 def read_branches(path: Path) -> pd.DataFrame:
@@ -49,7 +49,9 @@ def read_branches(path: Path) -> pd.DataFrame:
             continue
         for name in NUMBERS:
             cell = row[head.index(name)]
-            if not _good(cell, positive=name in _POSITIVE):
+            if name == "phases" and cell not in ("1", "3"):
+                problems.append(Problem(str(path), line, name, repr(cell[:40]), "1 or 3"))
+            elif not _good(cell, positive=name in _POSITIVE):
                 wanted = "a number above zero" if name in _POSITIVE else "a number"
                 problems.append(Problem(str(path), line, name, repr(cell[:40]), wanted))
     if problems:
@@ -67,8 +69,12 @@ def _good(cell: str, positive: bool) -> bool:
     return math.isfinite(value) and (value > 0 or not positive)
 
 
-def read_busbars(path: Path) -> dict[str, float]:
-    """Read new nominal volts: CSV with the columns busbar and nominal_voltage (`11.5 kV`)."""
+def read_busbars(path: Path) -> dict[str, float | Volts]:
+    """Read new nominal volts, and the old ones where a column `was` gives them.
+
+    The file is CSV with the headings busbar,nominal_voltage or busbar,nominal_voltage,was; the
+    cells hold volts such as `11.5 kV`.
+    """
     try:
         with path.open(encoding="utf-8-sig", newline="") as handle:
             reader = csv.DictReader(handle)
@@ -77,26 +83,29 @@ def read_busbars(path: Path) -> dict[str, float]:
     except (OSError, UnicodeDecodeError, csv.Error) as error:
         reason = getattr(error, "strerror", None) or "no CSV text"
         raise BranchwrightError([Problem(str(path), None, "", reason, "a CSV file")]) from None
-    if head[:2] != ["busbar", "nominal_voltage"]:
+    if head not in (_HEADINGS[:2], _HEADINGS):
         found = ", ".join(head) or "nothing"
-        raise BranchwrightError(
-            [Problem(str(path), 1, "", found, "the headings busbar,nominal_voltage")]
-        )
-    volts: dict[str, float] = {}
+        wanted = f"the headings {','.join(_HEADINGS[:2])} or {','.join(_HEADINGS)}"
+        raise BranchwrightError([Problem(str(path), 1, "", found, wanted)])
+    volts: dict[str, float | Volts] = {}
     problems: list[Problem] = []
     for line, row in enumerate(rows, 2):
-        text = row["nominal_voltage"] or ""
-        try:
-            value = parse(text, "voltage").value
-            if value <= 0:
-                raise QuantityError(expectation("voltage"), "it is above zero")
-            if row["busbar"] in volts:
-                problems.append(Problem(str(path), line, "busbar", row["busbar"], "each once"))
-            volts[row["busbar"]] = value
-        except QuantityError as error:
-            problems.append(
-                Problem(str(path), line, "nominal_voltage", repr(text), error.expected, error.mend)
-            )
+        cells = {name: row[name] or "" for name in head}
+        found_volts = {"was": math.nan}
+        for name in head[1:]:
+            if name == "was" and not cells[name]:
+                continue
+            try:
+                found_volts[name] = parse(cells[name], "voltage").value
+                if found_volts[name] <= 0:
+                    raise QuantityError(expectation("voltage"), "it is above zero")
+            except QuantityError as error:
+                read = repr(cells[name])
+                problems.append(Problem(str(path), line, name, read, error.expected, error.mend))
+        if cells["busbar"] in volts:
+            problems.append(Problem(str(path), line, "busbar", cells["busbar"], "each once"))
+        old, new = found_volts["was"], found_volts.get("nominal_voltage", math.nan)
+        volts[cells["busbar"]] = new if math.isnan(old) else (old, new)
     if problems:
         raise BranchwrightError(problems)
     return volts
@@ -105,7 +114,7 @@ def read_busbars(path: Path) -> dict[str, float]:
 def rebase(
     branches: pd.DataFrame,
     base_power: float | None = None,
-    busbars: Mapping[str, float] | None = None,
+    busbars: Mapping[str, float | Volts] | None = None,
     extras: tuple[str, ...] = (),
 ) -> pd.DataFrame:
     """Carry a branch table to another system base and other nominal volts.
@@ -117,7 +126,9 @@ def rebase(
     base_power : float, optional
         New three-phase base power [VA]; the table's own where left out.
     busbars : mapping, optional
-        New nominal volts [V] of the busbars named; the others keep theirs.
+        New nominal volts [V] of the busbars named, or (old, new); the others keep theirs. The old
+        ones are needed where only single-phase branches end, which may lie line to line or line
+        to neutral: a three-phase branch on the busbar tells them too.
     extras : tuple of str
         Columns to add: `own` (own base), `ohm` (from both sides), `percent`.
 
@@ -131,9 +142,12 @@ def rebase(
     BranchwrightError
         A busbar that no branch has, or volts that a single-phase branch cannot lie across.
     """
-    busbars = dict(busbars or {})
+    moves = {
+        name: volts if isinstance(volts, tuple) else (math.nan, volts)
+        for name, volts in (busbars or {}).items()
+    }
     known = set(branches["from_busbar"]) | set(branches["to_busbar"])
-    unknown = [name for name in busbars if name not in known]
+    unknown = [name for name in moves if name not in known]
     if unknown:
         listed = ", ".join(sorted(known)[:8])
         raise BranchwrightError([f"busbar {name!r}: no branch ends on it; there are {listed}"
@@ -145,7 +159,7 @@ def rebase(
     volts = {}
     for end in ("from", "to"):
         old = branches[f"base_kv_{end}"].to_numpy(dtype=float) * 1e3
-        volts[end] = (old, _moved(branches, end, old, single, busbars))
+        volts[end] = (old, _moved(branches, end, moves))
         new[f"base_kv_{end}"] = volts[end][1] / 1e3
     new["base_mva"] = s / 1e6
     base = {"s": old_s, "s_new": s, "u": volts["to"][0], "u_new": volts["to"][1]}
@@ -159,28 +173,43 @@ def rebase(
     return pd.concat([new, _extra_columns(new, extras)], axis=1)
 
 
-def _moved(
-    branches: pd.DataFrame, end: str, old: Any, single: Any, busbars: Mapping[str, float]
-) -> Any:
-    """New base volts of one end of every branch."""
-    names = branches[f"{end}_busbar"].to_numpy()
-    line = np.array([busbars.get(name, np.nan) for name in names], dtype=float)
-    neutral = line / math.sqrt(3.0)
-    new = np.where(np.isnan(line), old, line)
-    across_neutral = single & (np.abs(neutral / old - 1) <= _MOST_MOVED)
-    across_lines = ~single | (np.abs(line / old - 1) <= _MOST_MOVED)
-    new = np.where(across_neutral, neutral, new)
-    unclear = ~np.isnan(line) & ~(across_lines | across_neutral)
-    if unclear.any():
-        raise BranchwrightError(
-            [
-                f"{branches['name'].iloc[at]}: single-phase, {old[at] / 1e3:g} kV on {names[at]}: "
-                f"read {line[at] / 1e3:g} kV; expected nominal volts within "
-                f"{100 * _MOST_MOVED:g} % of its base, or of √3 times its base"
-                for at in np.flatnonzero(unclear)
-            ]
-        )
+def _moved(branches: pd.DataFrame, end: str, moves: Mapping[str, Volts]) -> Any:
+    """New base volts [V] of one end of every branch."""
+    lines = _old_volts(branches, moves)
+    new = branches[f"base_kv_{end}"].to_numpy(dtype=float) * 1e3
+    problems = []
+    for at, (name, busbar) in enumerate(
+        zip(branches["name"], branches[f"{end}_busbar"], strict=True)
+    ):
+        if busbar not in moves:
+            continue
+        if branches["phases"].iloc[at] == 3:
+            new[at] = moves[busbar][1]
+            continue
+        ratio = lines.get(busbar, math.nan) / new[at]
+        across = [root for root in (1.0, math.sqrt(3.0)) if abs(ratio / root - 1) < 1e-6]
+        if across:
+            new[at] = moves[busbar][1] / across[0]
+        else:
+            problems.append(
+                f"{name}: single-phase, {new[at] / 1e3:g} kV on {busbar}: read "
+                f"{moves[busbar][1] / 1e3:g} kV; expected the busbar's old nominal volts too, to "
+                "tell line to line from line to neutral: put them in a column `was`"
+            )
+    if problems:
+        raise BranchwrightError(problems)
     return new
+
+
+def _old_volts(branches: pd.DataFrame, moves: Mapping[str, Volts]) -> dict[str, float]:
+    """Old nominal volts of the busbars, from the file or from a three-phase branch."""
+    three = branches[branches["phases"] == 3]
+    told = {
+        busbar: kv * 1e3
+        for end in ("from", "to")
+        for busbar, kv in zip(three[f"{end}_busbar"], three[f"base_kv_{end}"], strict=True)
+    }
+    return told | {name: old for name, (old, _) in moves.items() if not math.isnan(old)}
 
 
 def _extra_columns(table: pd.DataFrame, extras: tuple[str, ...]) -> pd.DataFrame:

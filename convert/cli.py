@@ -191,7 +191,8 @@ def prove(folder: Path, edited: bool, form: str) -> int:
 @click.option("--base-power", type=_Quantity("apparent_power"),
               help='New system base power, such as "100 MVA".')  # fmt: skip
 @click.option("--busbars", type=PATH,
-              help="CSV with the columns busbar, nominal_voltage: new nominal volts.")  # fmt: skip
+              help="CSV with the columns busbar, nominal_voltage (new) and, where only "
+                   "single-phase branches end, was (old).")  # fmt: skip
 @click.option("--add", multiple=True, type=click.Choice(["own", "ohm", "percent"]),
               help="Add own-base, ohm or percent columns; may be repeated.")  # fmt: skip
 @click.option("--out", type=PATH, help="Write the table as CSV instead of printing it.")

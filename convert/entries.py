@@ -207,7 +207,7 @@ def single_phase_network(plant: Plant, units: Table, name: str) -> Network | Non
         name,
         "Single-phase units, one island each on its own volts and rating: per unit, volts and "
         "watts are the unit's own; multiply every *_ka column of the results by sqrt(3).",
-        plant.system.base_power / 3e6,
+        float(single["s_system"][0]) / 1e6,
         plant.system.frequency,
         buses(np.concatenate(names), volts),
         trafo_rows(_own(single, np.arange(n), np.arange(n, 2 * n))),

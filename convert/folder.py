@@ -21,7 +21,7 @@ CONTRACT = (
     "branches.csv", "units.csv", "taps.csv", "zero_sequence.csv", "losses.csv", "network.json",
     "single_phase.json", "retest.csv", "regulation.csv", "findings.csv", RECORD,
 )  # fmt: skip
-_FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
+_FORMULA_STARTS = ("=", "+", "-", "@", "\t", "'")
 
 
 def csv_text(table: pd.DataFrame) -> str:
@@ -32,10 +32,15 @@ def csv_text(table: pd.DataFrame) -> str:
     escaped = table.copy()
     for column in escaped.select_dtypes(object).columns:
         escaped[column] = [
-            f"'{cell}" if isinstance(cell, str) and cell.startswith(_FORMULA_STARTS) else cell
-            for cell in escaped[column]
+            _escaped(cell) if isinstance(cell, str) else cell for cell in escaped[column]
         ]
     return str(escaped.to_csv(index=False, lineterminator="\n"))
+
+
+def _escaped(cell: str) -> str:
+    """Mark text that a program would take for a formula, and keep it on one line."""
+    cell = cell.replace("\r", " ")
+    return f"'{cell}" if cell.startswith(_FORMULA_STARTS) else cell
 
 
 def read_csv(path: Path) -> pd.DataFrame:
@@ -47,7 +52,7 @@ def read_csv(path: Path) -> pd.DataFrame:
         if table[column].dtype == object and column not in text:
             table[column] = _numbers(table[column])
         if table[column].dtype == object:
-            table[column] = table[column].str.replace(r"^'(?=[=+\-@\t\r])", "", regex=True)
+            table[column] = table[column].str.replace(r"^'(?=[=+\-@\t'])", "", regex=True)
     return table
 
 
@@ -79,14 +84,17 @@ def check_target(folder: Path, force: bool) -> None:
 def write(folder: Path, files: Mapping[str, str], record: Mapping[str, Any], force: bool) -> None:
     """Write the files of a run.
 
-    A new or empty folder appears by one rename. With `force`, the contract's files are replaced
-    by one rename each, record.json removed first and written last, so that a folder with a record
-    is a whole one. After an error or an interrupt no new file is left half-written.
+    A new folder appears by one rename. In one that exists the contract's files are replaced by
+    one rename each, record.json removed first and written last, so that a folder with a record
+    is a whole one. After an error or an interrupt no new file is kept.
     """
     check_target(folder, force)
     folder = folder.resolve()
+    fresh = not folder.exists()
     folder.parent.mkdir(parents=True, exist_ok=True)
-    partial = Path(tempfile.mkdtemp(prefix=f".{folder.name}.partial-", dir=folder.parent))
+    home = folder.parent if fresh else folder
+    partial = Path(tempfile.mkdtemp(prefix=f".{folder.name}.partial-", dir=home))
+    placed: list[Path] = []
     try:
         for name, text in files.items():
             (partial / name).write_text(text, encoding="utf-8", newline="\n")
@@ -94,20 +102,28 @@ def write(folder: Path, files: Mapping[str, str], record: Mapping[str, Any], for
         body = json.dumps({**record, "outputs": hashes}, ensure_ascii=False, indent=1)
         (partial / RECORD).write_text(body + "\n", encoding="utf-8", newline="\n")
         partial.chmod(0o755)
-        if not folder.exists() or not any(folder.iterdir()):
-            if folder.exists():
-                folder.rmdir()
+        if fresh:
             partial.rename(folder)
-            return
-        (folder / RECORD).unlink(missing_ok=True)
-        for name in CONTRACT[:-1]:
-            if name in files:
-                (partial / name).replace(folder / name)
-            else:
-                (folder / name).unlink(missing_ok=True)
-        (partial / RECORD).replace(folder / RECORD)
+        else:
+            _replace(partial, folder, files, placed)
+    except BaseException:
+        for path in placed:
+            path.unlink(missing_ok=True)
+        raise
     finally:
         shutil.rmtree(partial, ignore_errors=True)
+
+
+def _replace(partial: Path, folder: Path, files: Mapping[str, str], placed: list[Path]) -> None:
+    """Move the files into a folder that exists, noting those that stand where none was."""
+    (folder / RECORD).unlink(missing_ok=True)
+    for name in (*CONTRACT[:-1], RECORD):
+        if name in files or name == RECORD:
+            if not (folder / name).exists():
+                placed.append(folder / name)
+            (partial / name).replace(folder / name)
+        else:
+            (folder / name).unlink(missing_ok=True)
 
 
 def write_file(path: Path, text: str, force: bool) -> None:

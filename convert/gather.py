@@ -166,16 +166,16 @@ def _stated(plant: Plant, units: Table) -> None:
             units.set(name, source[name], source.status[name])
             units.half_digit[name] = source.half_digit[name]
         base = f"{block}_base"
-        for side in ("hv", "lv"):
-            out = f"{block}_i_{side}"
-            units.put(out, open_circuit.rated_current, s=base, u=f"u_{side}", phases="phases")
         no_load = ~units.has("oc_watts") & units.has(f"{block}_no_load_loss")
+        load = ~units.has("sc_watts") & units.has(f"{block}_load_loss")
+        for side in ("hv", "lv"):
+            units.put(f"{block}_i_{side}", open_circuit.rated_current, where=no_load | load,
+                      s=base, u=f"u_{side}", phases="phases")  # fmt: skip
         units.put("oc_amps", metering.amps_of_share, where=no_load,
                   share=f"{block}_no_load_current", i_r=f"{block}_i_lv")  # fmt: skip
         units.overwrite("oc_volts", "u_lv", no_load)
         units.overwrite("oc_watts", f"{block}_no_load_loss", no_load)
         units.fill("oc_from", no_load, 0.0, Status.MEASURED)
-        load = ~units.has("sc_watts") & units.has(f"{block}_load_loss")
         units.put("sc_volts", metering.volts_of_share, where=load,
                   share=f"{block}_impedance_voltage", u_r="u_hv")  # fmt: skip
         units.overwrite("sc_amps", f"{block}_i_hv", load)

@@ -61,7 +61,7 @@ class Table:
     heading : dict of str
         The key of a column as the planner wrote it, for messages.
     steps : dict of Step
-        The formulas that made the columns.
+        The formulas that made the columns, each that served a row once.
     """
 
     n: int
@@ -143,7 +143,10 @@ class Table:
         elif where is not None:
             value = np.where(where, value, np.nan)
         self.set(out, value, worst)
-        self.steps.setdefault(out, Step(out, formula, tuple(columns.items())))
+        served = self.has(out) if where is None else self.has(out) & where
+        if served.any():
+            step = Step(out, formula, tuple(columns.items()))
+            self.steps.setdefault(f"{out} {formula.__name__} {step.columns}", step)
 
     def take(self, rows: NDArray[np.intp]) -> Table:
         """Return a new table of these rows, in this order."""

@@ -225,9 +225,12 @@ def build(
         retest, regulation, failures = proof.prove(
             Path(scratch), branches, table, expected, points, progress
         )
+    position = {name: at for at, name in enumerate(plant.transformers.text["name"])}
+    findings = [*findings, *sources, *failures]
+    findings.sort(key=lambda f: position.get(f.subject, len(position)))
     return Study(
-        plant, model, branches, table, losses, retest, regulation,
-        [*findings, *sources, *failures], left_out, texts, _steps(units), options or {},
+        plant, model, branches, table, losses, retest, regulation, findings, left_out, texts,
+        _steps(units), options or {},
     )  # fmt: skip
 
 
@@ -291,6 +294,37 @@ def _networks(plant: Plant, units: Table) -> tuple[dict[str, str], list[Finding]
     return texts, findings
 
 
+#: columns of each table that the proof reads: text, numbers
+_PROVEN = {
+    "branches": (
+        ("name", "from_busbar", "to_busbar", "model"),
+        ("phases", "base_kv_from", "base_kv_to", "rated_kv_from", "rated_kv_to", "rated_mva",
+         "shift_deg", "r_share_from", "x_share_from"),
+    ),
+    "units": (("name", "state"), ("rated_mva", "r_pu", "x_pu", "g_pu", "b_pu")),
+    "retest": (("name", "state", "test", "quantity", "unit", "certificate"), ("expected",)),
+    "regulation": (
+        ("name", "sense", "method"),
+        ("load_fraction", "power_factor", "hand_percent", "bound_points"),
+    ),
+}  # fmt: skip
+
+
+def _table(path: Path, texts: Sequence[str], numbers: Sequence[str]) -> pd.DataFrame:
+    """Read a table of an output folder, refusing one whose columns cannot be what build wrote."""
+    try:
+        table = folder.read_csv(path)
+    except (OSError, ValueError) as error:
+        raise BranchwrightError([f"{path}: cannot be read: {error}"]) from None
+    for name in (*texts, *numbers):
+        if name not in table:
+            raise BranchwrightError([f"{path}: has no column {name}"])
+    for name in numbers:
+        if table[name].dtype == object:
+            raise BranchwrightError([f"{path}: column {name}: read text; expected numbers"])
+    return table
+
+
 def prove(
     target: Path, *, edited: bool = False, progress: Callable[[str], None] = lambda _: None
 ) -> tuple[pd.DataFrame, pd.DataFrame, list[Finding]]:
@@ -318,13 +352,13 @@ def prove(
     folder.read_record(target, edited)
     if not any((target / name).exists() for name in proof.FILES):
         raise BranchwrightError([f"{target}: holds no network file; build with --network"])
-    try:
-        branches, units, retest, regulation = (
-            folder.read_csv(target / f"{name}.csv")
-            for name in ("branches", "units", "retest", "regulation")
-        )
-    except (OSError, ValueError) as error:
-        raise BranchwrightError([f"{target}: its tables cannot be read: {error}"]) from None
+    branches, units, retest, regulation = (
+        _table(target / f"{name}.csv", *columns) for name, columns in _PROVEN.items()
+    )
+    lacking = set(branches["name"]) - (set(retest["name"]) & set(regulation["name"]))
+    if lacking:
+        listed = ", ".join(sorted(map(str, lacking)))
+        raise BranchwrightError([f"{target}: no expected readings or regulation of {listed}"])
     expected = retest[[*proof.KEYS, "unit", "certificate", "correction", "expected"]]
     expected = expected[expected["unit"] != "count"].reset_index(drop=True)
     points = regulation.drop(columns=["flow_percent", "difference_points", "verdict"])

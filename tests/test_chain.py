@@ -46,7 +46,7 @@ def test_readings_are_reduced_to_the_known_circuit_at_the_studys_temperature(tes
         np.testing.assert_allclose(table[name], wanted, rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(stations(angles=(0.995, 0.999999)))
 def test_near_a_power_factor_of_one_resistance_and_magnitudes_are_the_known(tests):
     # x and b are the small roots there: half their digits are lost in any reduction
@@ -58,7 +58,7 @@ def test_near_a_power_factor_of_one_resistance_and_magnitudes_are_the_known(test
     np.testing.assert_allclose(np.abs(table["y_oc"]), np.abs(y), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(stations(split="resistances"))
 def test_split_by_resistances_gives_the_known_unlike_legs(tests):
     table = reduced(tests, study=STUDY)
@@ -71,7 +71,7 @@ def test_split_by_resistances_gives_the_known_unlike_legs(tests):
         np.testing.assert_allclose(table["z_to_study"][at], known.z_lv, rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(stations(most=3))
 def test_the_circuit_of_every_state_shows_both_tests_where_they_were_made(tests):
     table = reduced(tests, study=STUDY)

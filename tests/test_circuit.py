@@ -148,7 +148,7 @@ def test_volts_and_loss_under_load_are_those_of_the_network():
     np.testing.assert_allclose(found, lost, rtol=0, atol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations(most=3))
 def test_readings_by_formula_are_those_of_the_test_bay(tests):
     for test in tests:

@@ -42,7 +42,7 @@ def expected(tests, model="T", **system):
     return dict(zip(keys, table["expected"], strict=True)), plant, units
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(bays())
 def test_expected_readings_are_those_of_a_test_bay_at_each_temperature(test):
     found, *_ = expected([test], study=70.0)
@@ -71,7 +71,7 @@ def test_expected_readings_are_those_of_a_test_bay_at_each_temperature(test):
         np.testing.assert_allclose(got, wanted, rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=12)
 @given(bays())
 def test_the_simplified_circuit_is_expected_to_show_its_own_readings(test):
     found, *_ = expected([test], model="cantilever", study=70.0)
@@ -87,7 +87,7 @@ def test_the_simplified_circuit_is_expected_to_show_its_own_readings(test):
     np.testing.assert_allclose(got, [abs(state.amps[test.energised]), power], rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=12)
 @given(bays())
 def test_the_expected_angle_lags_by_the_clock_and_the_leg(test):
     found, *_ = expected([test], study=70.0)
@@ -212,7 +212,7 @@ def test_points_come_unit_by_unit_load_by_load_with_three_methods_each():
 # --- losses -------------------------------------------------------------------------------------
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=12)
 @given(bays())
 def test_losses_are_no_load_and_load_loss_of_the_test_bay(test):
     plant = plant_of([test], study=70.0)

@@ -142,6 +142,8 @@ def quantity_texts(draw):
 @example(("current", "1e\u22123 A"))
 @example(("voltage", "1e400 V"))
 @example(("voltage", "0e400 V"))
+@example(("frequency", "9" * 320 + " Hz"))
+@example(("ratio", "0." + "0" * 320 + "1 %"))
 @example(("resistance", "12.5 m\u2126"))
 @example(("resistance", "12.5 \u03bc\u03a9"))
 def test_the_schema_takes_exactly_the_quantities_that_are_read(case):

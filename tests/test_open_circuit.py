@@ -20,13 +20,13 @@ def known(tests):
     return np.array([test.unit.y * test.unit.ohm_base for test in tests])
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_readings_of_either_side_at_any_volts_give_the_known_admittance(tests):
     np.testing.assert_allclose(reduced(tests)["y_oc"], known(tests), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations(angles=(0.995, 0.999999)))
 def test_near_a_power_factor_of_one_conductance_and_magnitude_hold(tests):
     # b is the small root of i0² - g²: half the digits of i0 are lost on the way to it
@@ -35,7 +35,7 @@ def test_near_a_power_factor_of_one_conductance_and_magnitude_hold(tests):
     np.testing.assert_allclose(np.abs(found), np.abs(wanted), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_loss_and_amps_at_rated_volts_are_those_of_a_test_at_rated_volts(tests):
     rated = [test.at(oc_volts=0.0).open_circuit() for test in tests]
@@ -44,7 +44,7 @@ def test_loss_and_amps_at_rated_volts_are_those_of_a_test_at_rated_volts(tests):
     np.testing.assert_allclose(found["i0_amps"], [drive for _, drive, _ in rated], rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(bays())
 def test_scaled_readings_leave_the_admittance_alone(test):
     tests = [test.at(name=f"T{n}", oc_volts=test.oc_volts * n) for n in (1, 0.5, 0.01)]
@@ -52,7 +52,7 @@ def test_scaled_readings_leave_the_admittance_alone(test):
     np.testing.assert_allclose(found, found[0], rtol=1e-12)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(units())
 def test_a_unit_that_draws_nothing_at_no_load_has_no_shunt(unit):
     bare = Test(replace(unit, g=0.0, b=0.0))

@@ -31,7 +31,7 @@ def branch(table, test, base):
     return Circuit(leg, z - leg, table["y_system"][0] / ohm_to / turns**2, turns)
 
 
-@settings(derandomize=True, deadline=None, max_examples=40)
+@settings(derandomize=True, deadline=None, max_examples=20)
 @given(bays(), log_uniform(1e5, 1e9))
 def test_a_branch_on_any_base_is_the_unit_in_volts_and_amps(test, base):
     found = branch(reduced([test], study=75.0, base=base), test, base)
@@ -48,7 +48,7 @@ def test_a_branch_on_any_base_is_the_unit_in_volts_and_amps(test, base):
                 )
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(bays(), log_uniform(0.01, 100.0))
 def test_base_power_scales_series_and_shunt_and_leaves_the_ratio(test, factor):
     one, other = (reduced([test], base=power)
@@ -58,7 +58,7 @@ def test_base_power_scales_series_and_shunt_and_leaves_the_ratio(test, factor):
     np.testing.assert_array_equal(other["ratio"], one["ratio"])
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(units(phases=3))
 def test_shift_is_thirty_degrees_an_hour(unit):
     assert reduced([Test(unit)])["shift_deg"] == 30 * unit.clock

@@ -56,7 +56,7 @@ def test_loss_is_one_and_a_half_line_amps_squared_ohms_between_lines(ends):
     )
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_ohmic_loss_is_that_of_the_windings_at_the_temperature_of_the_test(tests):
     table = reduced(tests)
@@ -70,7 +70,7 @@ def test_ohmic_loss_is_that_of_the_windings_at_the_temperature_of_the_test(tests
         np.testing.assert_allclose(table[f"p_{side}_tested"], lost, rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations(split="resistances"))
 def test_split_by_resistances_is_the_known_share(tests):
     known = [test.unit.r_share(test.temperature) for test in tests]

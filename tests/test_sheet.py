@@ -3,6 +3,7 @@
 tests/sheets/bad/<name>.txt holds, line by line, what reading <name>.yaml must say.
 """
 
+import os
 import tempfile
 from pathlib import Path
 
@@ -39,7 +40,7 @@ def test_a_good_sheet_is_read(path):
 
 @pytest.mark.parametrize("path", BAD, ids=lambda path: path.stem)
 def test_a_bad_sheet_says_what_stands_beside_it(path):
-    said = [str(problem).replace(f"{path.parent}/", "") for problem in problems(path)]
+    said = [str(problem).replace(f"{path.parent}{os.sep}", "") for problem in problems(path)]
     wanted = path.with_suffix(".txt").read_text(encoding="utf-8").splitlines()
     assert sorted(said) == sorted(wanted)
 

@@ -18,13 +18,13 @@ def known(tests):
     return np.array([test.unit.z(test.temperature) / test.unit.ohm_base for test in tests])
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_readings_of_either_side_at_any_amps_give_the_known_impedance(tests):
     np.testing.assert_allclose(reduced(tests)["z_sc_tested"], known(tests), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations(angles=(0.995, 0.999999)))
 def test_near_a_power_factor_of_one_resistance_and_magnitude_hold(tests):
     # x is the small root of z² - r²: half the digits of z are lost on the way to it
@@ -33,7 +33,7 @@ def test_near_a_power_factor_of_one_resistance_and_magnitude_hold(tests):
     np.testing.assert_allclose(np.abs(found), np.abs(wanted), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_loss_and_volts_at_rated_amps_are_those_of_a_test_at_rated_amps(tests):
     rated = [test.at(sc_amps=0.0).short_circuit() for test in tests]
@@ -42,7 +42,7 @@ def test_loss_and_volts_at_rated_amps_are_those_of_a_test_at_rated_amps(tests):
     np.testing.assert_allclose(found["uk_volts"], [volts for volts, _, _ in rated], rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(bays())
 def test_scaled_readings_leave_the_impedance_alone(test):
     tests = [test.at(name=f"T{n}", sc_amps=test.sc_amps * n) for n in (1, 0.5, 0.01)]

@@ -14,7 +14,7 @@ CLOSE = 1e-9
 STUDY = 68.0
 
 
-@settings(derandomize=True, deadline=None, max_examples=40)
+@settings(derandomize=True, deadline=None, max_examples=20)
 @given(stations())
 def test_load_loss_is_that_of_a_test_at_the_wanted_temperature(tests):
     # two metals, a cold test and cold resistances at temperatures of their own
@@ -27,7 +27,7 @@ def test_load_loss_is_that_of_a_test_at_the_wanted_temperature(tests):
         np.testing.assert_allclose(table[f"pk_{state}"], warm, rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_the_states_are_at_the_temperatures_that_the_sheet_gives(tests):
     table = reduced(tests, study=STUDY)
@@ -37,7 +37,7 @@ def test_the_states_are_at_the_temperatures_that_the_sheet_gives(tests):
     np.testing.assert_array_equal(table["t_reference"], given_or_study)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(stations())
 def test_reactance_does_not_move(tests):
     table = reduced(tests, study=STUDY)
@@ -58,7 +58,7 @@ def test_every_pair_of_metals_by_both_standards(hv_metal, lv_metal, standard):
     assert table["pk_study"][0] == pytest.approx(bay.short_circuit(95.0)[2], rel=CLOSE, abs=0)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(units())
 def test_without_resistances_the_loss_of_a_warmer_winding_is_an_upper_bound(unit):
     # all of the loss is then taken for I²R, which rises; the stray part of it falls
@@ -71,7 +71,7 @@ def test_without_resistances_the_loss_of_a_warmer_winding_is_an_upper_bound(unit
     assert table["pk_study"][0] >= warm * (1 - gap)
 
 
-@settings(derandomize=True, deadline=None, max_examples=15)
+@settings(derandomize=True, deadline=None, max_examples=10)
 @given(units())
 def test_without_resistances_a_unit_of_one_metal_without_stray_is_known(unit):
     plain = replace(unit, stray=0.0, lv=replace(unit.lv, metal=unit.hv.metal))
@@ -104,7 +104,7 @@ def test_losses_go_to_another_temperature_and_back():
         assert carry(there, 85.0, 18.0, 225.0) == pytest.approx(431.0, rel=4e-16, abs=0)
 
 
-@settings(derandomize=True, deadline=None, max_examples=25)
+@settings(derandomize=True, deadline=None, max_examples=12)
 @given(units(angles=(0.05, 0.5)))
 def test_the_law_at_the_terminals_and_in_the_legs_differ_by_less_than_zy(unit):
     # A modelling difference, not an error: the standards define load loss at the terminals. Were

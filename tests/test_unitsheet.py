@@ -54,7 +54,7 @@ def test_a_row_for_every_stage_and_state_in_order(tests):
                 assert row["winding_temp_degc"] == temperature(test, state)
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(bays())
 def test_results_are_those_of_a_test_at_the_rated_amps_and_volts_of_the_stage(test):
     for (_, stage, state), row in rows([test]).items():
@@ -79,7 +79,7 @@ def test_results_are_those_of_a_test_at_the_rated_amps_and_volts_of_the_stage(te
         np.testing.assert_allclose(found, list(wanted.values()), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(bays())
 def test_six_elements_in_ohm_from_both_sides_are_the_units_own(test):
     for (_, _, state), row in rows([test]).items():
@@ -105,7 +105,7 @@ def test_six_elements_in_ohm_from_both_sides_are_the_units_own(test):
                 assert lines[0] == pytest.approx(lines[1], rel=1e-12, abs=0)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=12)
 @given(bays())
 def test_per_unit_circuit_is_the_ohms_on_the_stages_own_base(test):
     for (_, stage, state), row in rows([test]).items():
@@ -115,7 +115,7 @@ def test_per_unit_circuit_is_the_ohms_on_the_stages_own_base(test):
         np.testing.assert_allclose(found, (known.z / base, known.y * base), rtol=CLOSE)
 
 
-@settings(derandomize=True, deadline=None, max_examples=20)
+@settings(derandomize=True, deadline=None, max_examples=12)
 @given(bays(), bays())
 def test_the_stage_of_the_study_leaves_the_ohms_and_every_row_alone(test, other):
     power = other.unit.power if 0.2 < other.unit.power / test.unit.power < 5 else test.unit.power
@@ -137,7 +137,7 @@ def volts_and_loss(t, load):
     return 1 / scale, (state.power("hv") + state.power("lv")).real / scale**2
 
 
-@settings(derandomize=True, deadline=None, max_examples=30)
+@settings(derandomize=True, deadline=None, max_examples=15)
 @given(bays())
 def test_errors_of_simpler_circuits_are_those_of_their_networks(test):
     for (_, stage, state), row in rows([test]).items():
