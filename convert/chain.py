@@ -174,7 +174,7 @@ def _unequal(units: Table, state: str, where: Mask) -> None:
     # a solver is no formula: what is logged is the relation that it solves
     legs = (("z_a", f"z_from_{state}"), ("z_b", f"z_to_{state}"), ("y_m", f"y_m_{state}"))
     relation = f"z_sc_{state} where the legs are unequal, fed from HV"
-    units.steps[relation] = Step(relation, circuit.short_circuit_impedance, legs)
+    units.log(Step(relation, circuit.short_circuit_impedance, legs))
 
 
 def to_system_base(units: Table) -> None:

@@ -164,7 +164,7 @@ def check(inputs: tuple[Path, ...], **options: Any) -> int:
     return 1 if left_out else 0
 
 
-@main.command(epilog=CAUTION)
+@main.command(epilog=CAUTION, short_help="Repeat the proof of a folder from its files.")
 @click.argument("folder", type=PATH)
 @click.option("--edited", is_flag=True, help="Prove the files although they were changed.")
 @_format
@@ -186,7 +186,7 @@ def prove(folder: Path, edited: bool, form: str) -> int:
     return 1 if findings else 0
 
 
-@main.command(epilog=CAUTION)
+@main.command(epilog=CAUTION, short_help="Carry a branch table to another base.")
 @click.argument("branches", type=PATH)
 @click.option("--base-power", type=_Quantity("apparent_power"),
               help='New system base power, such as "100 MVA".')  # fmt: skip
@@ -224,7 +224,7 @@ def rebase(
     return 0
 
 
-@main.command()
+@main.command(short_help="Print a sheet to begin with.")
 @click.argument("kind", type=click.Choice(["station", "sample"]))
 @click.option("--out", type=PATH, help="Write the sheet to this file instead of printing it.")
 @_force

@@ -60,7 +60,7 @@ class Table:
         Names, words and readings as printed; empty text where absent.
     heading : dict of str
         The key of a column as the planner wrote it, for messages.
-    steps : dict of Step
+    steps : list of Step
         The formulas that made the columns, each that served a row once.
     """
 
@@ -71,7 +71,7 @@ class Table:
     half_digit: dict[str, Floats] = field(default_factory=dict)
     text: dict[str, NDArray[np.object_]] = field(default_factory=dict)
     heading: dict[str, str] = field(default_factory=dict)
-    steps: dict[str, Step] = field(default_factory=dict)
+    steps: list[Step] = field(default_factory=list)
 
     def __getitem__(self, column: str) -> NDArray[Any]:
         return self.values[column]
@@ -126,11 +126,15 @@ class Table:
         Parameters
         ----------
         out : str
-            Column written; `formula` is called with the columns named in `columns`.
+            Column written.
+        formula : callable
+            Called with the columns named in `columns`.
         where : (n,) bool, optional
             Rows written; the others keep what they had.
         at_least : Status or (n,) of it
             The result's status is the worst of the arguments' and this; absent if one is absent.
+        **columns : str
+            Argument of the formula -> column.
         """
         with np.errstate(all="ignore"):
             value = formula(**{name: self.values[column] for name, column in columns.items()})
@@ -145,8 +149,11 @@ class Table:
         self.set(out, value, worst)
         served = self.has(out) if where is None else self.has(out) & where
         if served.any():
-            step = Step(out, formula, tuple(columns.items()))
-            self.steps.setdefault(f"{out} {formula.__name__} {step.columns}", step)
+            self.log(Step(out, formula, tuple(columns.items())))
+
+    def log(self, *steps: Step) -> None:
+        """Note steps, each once."""
+        self.steps.extend(step for step in steps if step not in self.steps)
 
     def take(self, rows: NDArray[np.intp]) -> Table:
         """Return a new table of these rows, in this order."""
@@ -158,7 +165,7 @@ class Table:
             {name: column[rows] for name, column in self.half_digit.items()},
             {name: column[rows] for name, column in self.text.items()},
             dict(self.heading),
-            dict(self.steps),
+            list(self.steps),
         )
 
     def worst(self, columns: Iterable[str]) -> NDArray[np.uint8]:

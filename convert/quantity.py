@@ -9,7 +9,6 @@ from __future__ import annotations
 import math
 import re
 from dataclasses import dataclass
-from difflib import get_close_matches
 from functools import cache
 from typing import Any
 
@@ -46,11 +45,11 @@ percent = 0.01 * pu
 """
 #: pint rewrites these signs before it looks a unit up; it is given plain letters instead
 _PLAIN = str.maketrans({"Ω": "ohm", "µ": "u", "°": "deg", "%": "percent"})
-NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]{1,2})?"
+NUMBER = r"[+-]?(?:[0-9]{1,30}(?:\.[0-9]{0,30})?|\.[0-9]{1,30})(?:[eE][+-]?[0-9]{1,2})?"
 ROOT_THREE = r"\s*/\s*(?:√\s*3|sqrt\(3\))"
 _TEXT = re.compile(rf"({NUMBER})({ROOT_THREE})?\s*([^\s\d.,+\-/*^()]*)")
 _COMMA = re.compile(r"[+-]?\d+,\d+")
-_HUGE = re.compile(r"[+-]?[\d.]+[eE][+-]?\d{3,}")
+_HUGE = re.compile(r"[+-]?(?:[\d.]+[eE][+-]?\d{3,}|[\d.]{31,})")
 _SPACED = re.compile(r"\d[\s'_]+\d")
 #: both code points of micro and of ohm are read
 _SAME = str.maketrans({"μ": "µ", "\u2126": "Ω", "−": "-", "\u00a0": " "})
@@ -163,7 +162,7 @@ def _mend_unit(number: str, word: str, words: tuple[str, ...]) -> str:
     for other in FAMILIES.values():
         if word in other[0]:
             return f"{word} is the unit of {other[2]}: write one of {choice}"
-    near = [w for w in words if w.lower() == word.lower()] or get_close_matches(word, words, 1)
+    near = [w for w in words if w.lower().lstrip("°") == word.lower()]
     hint = f"did you mean {' or '.join(near)}?" if near else f"the units read here are {choice}"
     return f"unit {word!r} is not known ({hint}); m is milli, M is mega"
 

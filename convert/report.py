@@ -40,12 +40,12 @@ def study_text(study: Study, target: Path | None, written: Sequence[str]) -> str
 def branch_text(branches: pd.DataFrame) -> str:
     """Return the branch table: where it runs, and its per-unit values."""
     ends = [
-        (_short(b.name, 20), _short(b.from_busbar, 20), _short(b.to_busbar, 20),
+        (_short(b.name, 16), _short(b.from_busbar, 16), _short(b.to_busbar, 16),
          f"{b.rated_mva:g}", f"{b.rated_kv_from:g}/{b.rated_kv_to:g}", f"{b.shift_deg:g}", b.status)
         for b in _rows(branches)
     ]  # fmt: skip
     values = [
-        (_short(b.name, 20), f"{b.base_mva:g}", _number(b.r_pu), _number(b.x_pu), _number(b.g_pu),
+        (_short(b.name, 16), f"{b.base_mva:g}", _number(b.r_pu), _number(b.x_pu), _number(b.g_pu),
          _number(b.b_pu), _number(b.ratio_pu), f"{b.winding_temp_degc:g}")
         for b in _rows(branches)
     ]  # fmt: skip
@@ -99,8 +99,8 @@ def _regulation_lines(regulation: pd.DataFrame) -> Iterator[str]:
     shown = regulation[full | (regulation["verdict"] == "fail")]
     yield f"Regulation and drop in % at {100 * top:g} % load, by hand and by load flow:"
     rows = [
-        (_short(r.name, 16), f"{r.power_factor:g} {r.sense}", r.method, f"{r.hand_percent:.6f}",
-         f"{r.flow_percent:.6f}", f"{r.difference_points:+.1e}", f"{r.bound_points:.1e}", r.verdict)
+        (_short(r.name, 14), f"{r.power_factor:g} {r.sense}" + _load(r.load_fraction, top),
+         r.method, f"{r.hand_percent:.6f}", f"{r.flow_percent:.6f}", f"{r.difference_points:+.1e}", f"{r.bound_points:.1e}", r.verdict)
         for r in _rows(shown)
     ]  # fmt: skip
     yield from grid(
@@ -109,6 +109,11 @@ def _regulation_lines(regulation: pd.DataFrame) -> Iterator[str]:
     rest = len(regulation) - len(rows)
     if rest > 0:
         yield f"{rest} more points in regulation.csv"
+
+
+def _load(fraction: float, top: float) -> str:
+    """The load of a row that is not at the heading's."""
+    return "" if fraction == top else f" {100 * fraction:g} %"
 
 
 def verdict_line(retest: pd.DataFrame, regulation: pd.DataFrame) -> str:
@@ -147,11 +152,8 @@ def check_text(findings: Sequence[Finding], units: int, left_out: Sequence[str])
     """Return what `check` prints."""
     counts = {s: sum(f.severity is s for f in findings) for s in Severity}
     total = ", ".join(f"{n} {severity.value}{'s' * (n != 1)}" for severity, n in counts.items())
-    blocks = [
-        findings_text(findings),
-        f"{units} units can be built: {total}.",
-        *_left_out(left_out),
-    ]
+    can = f"{units} unit{'s' * (units != 1)} can be built: {total}."
+    blocks = [findings_text(findings), can, *_left_out(left_out)]
     return "\n\n".join(blocks)
 
 
@@ -164,7 +166,7 @@ def _left_out(names: Sequence[str]) -> list[str]:
 
 def table_text(table: pd.DataFrame) -> str:
     """Return any table, its columns in blocks that fit the width, the first column in each."""
-    cells = {name: [_cell(value) for value in table[name]] for name in table.columns}
+    cells = {name: [_short(_cell(value), 40) for value in table[name]] for name in table.columns}
     first, *others = cells
     lead = max(len(first), *(len(text) for text in cells[first]), 0)
     blocks: list[list[str]] = [[]]

@@ -238,7 +238,7 @@ def _steps(units: Table) -> list[dict[str, str]]:
     """Return every formula that made a number of this study, once, with its source."""
     logged = [
         (step.out, step.formula, ", ".join(f"{name} = {column}" for name, column in step.columns))
-        for step in units.steps.values()
+        for step in units.steps
     ]
     by_hand = [(formula.__name__, formula, "per load point") for formula in expectation.HAND]
     return [
@@ -336,6 +336,8 @@ def prove(
         A folder that `build` wrote, with its network files.
     edited : bool
         Prove the files as they are, although they differ from the record's hashes.
+    progress : callable
+        Told what is being solved.
 
     Returns
     -------

@@ -44,7 +44,7 @@ def table(plant: Plant, units: Table) -> Columns:
     _on_stage(rows)
     _ohms(rows)
     _simpler(rows)
-    units.steps.update(rows.steps)
+    units.log(*rows.steps)
     return _columns(rows, stage, np.array(STATES, dtype=object)[state])
 
 

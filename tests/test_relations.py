@@ -106,9 +106,9 @@ def test_base_and_frequency_must_agree(sheets):
     differing = OTHER.replace("100 MVA", "10 MVA").replace("50 Hz", "60 Hz")
     assert messages(sheets(SHEET, differing)) == [
         "b.yaml:3: system.base_power: read '10 MVA'; expected 100 MVA as in a.yaml:3; "
-        "or give the option of this name",
+        "or give --base-power",
         "b.yaml:4: system.frequency: read '60 Hz'; expected 50 Hz as in a.yaml:4; "
-        "or give the option of this name",
+        "or give --frequency",
     ]
 
 
@@ -130,7 +130,7 @@ def test_study_temperatures_must_agree_where_both_sheets_say_one(sheets):
     first = warm.replace("T2", "T3")
     assert messages(sheets(first, hot)) == [
         "b.yaml:5: system.study_temperature: read '85 °C'; expected 75 °C as in a.yaml:5; "
-        "or give the option of this name"
+        "or give --temperature"
     ]
     assert read(*sheets(first, hot), temperature=20.0).system.study_temperature == 20.0
 

@@ -12,6 +12,8 @@ from .. import vectorgroup
 from ..quantity import Quantity
 from .document import Document, Place
 
+#: near names are looked for while a sheet has fewer problems than this: each look costs a pass
+_MOST_NEAR = 50
 #: a percentage and the key that names its base
 _BASES = {
     "plate_impedance": "plate_impedance_base",
@@ -117,7 +119,9 @@ def _check_sides(unit: Row, names: Sequence[str], three: bool | None) -> None:
     for side in ("hv", "lv"):
         bus = unit.text.get(f"{side}_busbar")
         if bus is not None and bus not in names and not unit.faulty(f"{side}_busbar"):
-            unit.report(f"{side}_busbar", "the name of a busbar", _near(bus, tuple(names)))
+            few = len(unit.document.problems) < _MOST_NEAR
+            mend = _near(bus, tuple(names)) if few else "list it under busbars"
+            unit.report(f"{side}_busbar", "the name of a busbar", mend)
         across, connection = f"{side}_across", f"{side}_connection"
         if three is True and across in unit.text:
             unit.report(across, "no such key on a three-phase unit")

@@ -16,6 +16,8 @@ from .document import Document, Place, load
 from .fields import Field, layout
 from .relations import Row, check_names, check_unit, unique_busbars
 
+_OPTIONS = {"base_power": "--base-power", "frequency": "--frequency",
+            "study_temperature": "--temperature"}  # fmt: skip
 TABLES = ("busbars", "transformers", "stages", "open_circuit", "short_circuit", "resistance")
 
 
@@ -46,6 +48,7 @@ def read(
     BranchwrightError
         With every fault of every sheet, a line each.
     """
+    _check_options(base_power, frequency, temperature)
     documents = [load(Path(path)) for path in paths]
     rows: dict[str, list[Row]] = {name: [] for name in (*TABLES, "system", "station")}
     for document in documents:
@@ -72,11 +75,30 @@ def read(
     for unit, tests in zip(rows["transformers"], nested, strict=True):
         check_unit(unit, names, tests, stage)
     problems = [problem for document in documents for problem in document.problems]
+    if stage is not None and not problems and not rows["stages"]:
+        text = f"option --stage: read {stage!r}; expected a unit with cooling stages"
+        raise BranchwrightError([text])
     if problems:
         order = {str(path): at for at, path in enumerate(paths)}
         problems.sort(key=lambda p: (order.get(p.file, 0), p.line or 0))
         raise BranchwrightError(list(dict.fromkeys(problems)))
     return _plant(documents, system, rows, busbars)
+
+
+def _check_options(base_power: float | None, *others: float | None) -> None:
+    """Hold options to the limits of the keys that they stand for."""
+    for (column, option), value in zip(_OPTIONS.items(), (base_power, *others), strict=True):
+        spec = layout().fields[("system", column)]
+        low = -math.inf if spec.above is None else spec.above
+        high = math.inf if spec.below is None else spec.below
+        if value is not None and not low < value < high:
+            assert spec.dimension is not None
+            limits = [f"more than {show(low, spec.dimension)}"]
+            limits += [f"less than {show(high, spec.dimension)}"] if math.isfinite(high) else []
+            read = show(value, spec.dimension)
+            raise BranchwrightError(
+                [f"option {option}: read {read!r}; expected {' and '.join(limits)}"]
+            )
 
 
 def _collect(
@@ -108,6 +130,8 @@ def _collect(
 
 def _read_field(document: Document, tree: Any, place: Place, spec: Field, row: Row) -> None:
     parts = tree if isinstance(tree, list) else [tree]
+    if spec.dimension:  # a reading broken over two lines is still one
+        parts = [" ".join(part.split()) if isinstance(part, str) else part for part in parts]
     row.places[spec.column] = place
     if not all(isinstance(part, (str, int)) for part in parts):
         return  # the schema has said so
@@ -171,7 +195,7 @@ def _system(rows: Sequence[Row], options: System) -> System:
             if other.number[column].value != first.number[column].value:
                 where = f"{first.document.name}:{first.document.line(first.places[column])}"
                 other.report(
-                    column, f"{first.text[column]} as in {where}", "or give the option of this name"
+                    column, f"{first.text[column]} as in {where}", f"or give {_OPTIONS[column]}"
                 )
         setattr(options, column, first.number[column].value)
     for column in ("load_fractions", "power_factors"):
