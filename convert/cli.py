@@ -59,12 +59,21 @@ def _guarded(command: Callable[..., int]) -> Callable[..., None]:
             where = f"{error.filename}: " if error.filename else ""
             click.echo(f"{where}{error.strerror or error}; nothing was written", err=True)
             code = 2
-        except KeyboardInterrupt:
+        except (KeyboardInterrupt, RuntimeError) as error:
+            if not _interrupted(error):
+                raise
             click.echo("interrupted; no new file was kept", err=True)
             code = 130
         sys.exit(code)
 
     return run
+
+
+def _interrupted(error: BaseException | None) -> bool:
+    """Return whether Ctrl-C is behind an error: one that falls into an import comes out wrapped."""
+    while error is not None and not isinstance(error, KeyboardInterrupt):
+        error = error.__cause__ or error.__context__
+    return error is not None
 
 
 def _progress(text: str) -> None:

@@ -189,7 +189,7 @@ class System:
 
     base_power [VA], frequency [Hz], study_temperature [°C]; load_fractions (1 = rated) and
     power_factors (cosφ, `lagging`, `leading` or `unity`) are the points of the regulation table.
-    written_frequency [Hz] is the sheets' own, where an option says another.
+    written_frequencies [Hz] are the sheets' own, where an option says another.
     """
 
     base_power: float = np.nan
@@ -202,7 +202,7 @@ class System:
         (1.0, "unity"),
         (0.9, "leading"),
     )
-    written_frequency: float = np.nan
+    written_frequencies: tuple[float, ...] = ()
 
 
 @dataclass

@@ -100,7 +100,8 @@ def _regulation_lines(regulation: pd.DataFrame) -> Iterator[str]:
     yield f"Regulation and drop in % at {100 * top:g} % load, by hand and by load flow:"
     rows = [
         (_short(r.name, 14), f"{r.power_factor:g} {r.sense}" + _load(r.load_fraction, top),
-         r.method, f"{r.hand_percent:.6f}", f"{r.flow_percent:.6f}", f"{r.difference_points:+.1e}", f"{r.bound_points:.1e}", r.verdict)
+         r.method, f"{r.hand_percent:.6f}", f"{r.flow_percent:.6f}", f"{r.difference_points:+.1e}",
+         f"{r.bound_points:.1e}", r.verdict)
         for r in _rows(shown)
     ]  # fmt: skip
     yield from grid(

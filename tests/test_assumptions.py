@@ -281,6 +281,24 @@ def test_volts_that_are_not_rated_tell_how_the_readings_were_carried(tmp_path: P
     assert "×1.0204" in finding.effect
 
 
+@pytest.mark.parametrize(
+    ("changes", "cause"),
+    [
+        # phase volts taken as line volts: the loss would be written three times too large
+        ((("volts: 11.000 kV", "volts: 6.351 kV"),), "phase volts"),
+        # the LV side's volts said to be the HV side's: 36 times
+        ((("energised: lv", "energised: hv"),), "side"),
+    ],
+)
+def test_volts_far_from_rated_are_a_caution_that_names_the_slip(
+    tmp_path: Path, changes: tuple, cause: str
+):
+    text = sheet(unit(*changes))
+    finding = only(findings(tmp_path, text), "no-load-not-at-rated-volts")
+    assert finding.severity is Severity.CAUTION
+    assert cause in finding.likely_cause
+
+
 @pytest.mark.parametrize("volts", ["11.000 kV", "11.0004 kV", "[10.99 kV, 11.00 kV, 11.01 kV]"])
 def test_volts_that_are_rated_as_far_as_they_are_printed_are_not_spoken_of(
     tmp_path: Path, volts: str

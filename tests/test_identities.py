@@ -191,6 +191,13 @@ def test_amps_that_were_mistyped_are_in_the_finding_as_printed(tmp_path: Path):
     assert "6.600 kV" in finding.found
 
 
+def test_an_impedance_that_no_transformer_has_is_not_silent_without_a_plate(tmp_path: Path):
+    # HV's volts and amps said to be LV's: uk is 36 times too large, 360 %
+    text = sheet(unit(("fed: hv", "fed: lv"), ("    plate_impedance: 10.00 %\n", "")))
+    cautions = [f for f in findings(tmp_path, text) if f.severity is Severity.CAUTION]
+    assert [f for f in cautions if "360" in f.found and "side" in f.likely_cause]
+
+
 # --- stray loss ---------------------------------------------------------------------------------
 
 
@@ -394,12 +401,14 @@ def test_without_resistances_a_result_beyond_the_bounds_is_a_caution(
         ("volts: 11.000 kV", "volts: [11.00 kV, 11.01 kV, 10.10 kV]"),
         (VOLTS, "volts: [6.600 kV, 6.060 kV, 6.601 kV]"),
         (AMPS, "amps: [174.9 A, 147.9 A, 175.0 A]"),
+        ("ohms: 1.040 ohm", "ohms: [1.040 ohm, 1.041 ohm, 1.140 ohm]"),
+        ("ohms: 20.00 mohm", "ohms: [20.00 mohm, 22.00 mohm, 20.01 mohm]"),
     ],
 )
 def test_one_reading_of_three_that_stands_apart_is_shown_with_its_line(
     tmp_path: Path, old: str, new: str
 ):
-    text = sheet(unit((old, new)))
+    text = sheet(unit((old, new), resistance=True))
     finding = only(findings(tmp_path, text), "three-readings")
     assert finding.severity is Severity.CAUTION
     assert stands_at(finding, text, new)
@@ -413,12 +422,13 @@ def test_one_reading_of_three_that_stands_apart_is_shown_with_its_line(
         (VOLTS, "volts: [6.550 kV, 6.600 kV, 6.650 kV]"),  # 1.5 % from end to end
         # unequal no-load amps are the nature of a three-limb core, not a mistake
         ("amps: 3.149 A", "amps: [3.37 A, 2.71 A, 3.37 A]"),
+        ("ohms: 1.040 ohm", "ohms: [1.040 ohm, 1.045 ohm, 1.035 ohm]"),
     ],
 )
 def test_three_readings_that_differ_as_readings_do_are_not_spoken_of(
     tmp_path: Path, old: str, new: str
 ):
-    assert rules(findings(tmp_path, sheet(unit((old, new))))) == set()
+    assert rules(findings(tmp_path, sheet(unit((old, new), resistance=True)))) == set()
 
 
 # --- order --------------------------------------------------------------------------------------

@@ -188,8 +188,8 @@ def _mixed(units: Table) -> Iterator[Finding]:
 
 def _frequency(plant: Plant, units: Table) -> Iterator[Finding]:
     """Say that an option's frequency is not the sheets'."""
-    written, used = plant.system.written_frequency, plant.system.frequency
-    if written != used and not np.isnan(written):
+    used = plant.system.frequency
+    for written in (f for f in plant.system.written_frequencies if f != used):
         yield Finding(
             Severity.CAUTION, "the study", "frequency-by-option", "system.frequency",
             f"{used:g} Hz by option, {written:g} Hz in the sheet", "one frequency",

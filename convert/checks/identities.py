@@ -161,18 +161,19 @@ def _relative_half(units: Table, test: str, **powers: float) -> Any:
 def _stated(units: Table) -> Iterator[Finding]:
     """Compare results that the certificate states with what its readings give."""
     share = units["results_base"] / units["s"]
-    p_k, digits = _carried(units)
+    p_k, digits, bound = _carried(units)
     load = _relative_half(units, "sc", watts=1, amps=2) + digits
     z = np.hypot(p_k / units["s"], units["x"])
     r_part = (p_k / units["s"] / z) ** 2  # how much of a change in r is felt in z
     impedance = _relative_half(units, "sc", volts=1, amps=1) + r_part * load
-    for column, value, half, dimension, test in (
-        ("load_loss", p_k * share**2, load, "active_power", "sc"),
-        ("impedance_voltage", z * share, impedance, "ratio", "sc"),
-        ("no_load_loss", units["p0"], _relative_half(units, "oc", watts=1, volts=2),
+    closed = np.zeros(units.n)
+    for column, value, half, bounds, dimension, test in (
+        ("load_loss", p_k * share**2, load, bound, "active_power", "sc"),
+        ("impedance_voltage", z * share, impedance, r_part * bound, "ratio", "sc"),
+        ("no_load_loss", units["p0"], _relative_half(units, "oc", watts=1, volts=2), closed,
          "active_power", "oc"),
         ("no_load_current", units["i0"] / share, _relative_half(units, "oc", amps=1, volts=1),
-         "ratio", "oc"),
+         closed, "ratio", "oc"),
     ):  # fmt: skip
         stated = units[f"results_{column}"]
         own = np.nan_to_num(units.half_digit[f"results_{column}"] / stated)
@@ -190,13 +191,17 @@ def _stated(units: Table) -> Iterator[Finding]:
                 "readings and results of one certificate agree within their printed digits",
             )  # fmt: skip
 
-        yield from each(units, measured & (np.abs(off) > own + half), fill)
+        beyond = (off < np.minimum(bounds, 0) - own - half) | (
+            off > np.maximum(bounds, 0) + own + half
+        )
+        yield from each(units, measured & beyond, fill)
 
 
-def _carried(units: Table) -> tuple[Any, Any]:
-    """Load loss [W] at the results' temperature, and how far its printed digits leave it open.
+def _carried(units: Table) -> tuple[Any, Any, Any]:
+    """Load loss [W] at the results' temperature, all I²R where it could not be split.
 
-    Without resistances it lies anywhere between all I²R and all stray.
+    Beside it how far its printed digits leave it open, and, where it could not be split, by how
+    much it is above (or below) what it would be if all were stray; both relative.
     """
     t, tested = units["results_temperature"], units["t_tested"]
     total, stray = units["pk_tested"], units["p_stray_tested"]
@@ -218,9 +223,8 @@ def _carried(units: Table) -> tuple[Any, Any]:
             ohms = units.half_digit[f"ohms_{side}"] / units[f"ohms_{side}"]
             cold = units.half_digit[f"t_{side}"] / (units[f"k_{side}"] + units[f"t_{side}"])
             digits = digits + np.abs(factor - 1 / factor) * part * np.nan_to_num(ohms + cold)
-        open_split = ~separable(units) & (t != tested)
-        digits = np.where(open_split, np.abs(1 - factor**-2) + digits, digits)
-    return p_k, np.nan_to_num(digits)
+        bound = np.where(separable(units) | (t == tested), 0.0, factor**2 - 1)
+    return p_k, np.nan_to_num(digits), np.nan_to_num(bound)
 
 
 def _spread(units: Table) -> Iterator[Finding]:

@@ -186,8 +186,8 @@ def _system(rows: Sequence[Row], options: System) -> System:
     """Join the sheets' systems; a difference is a fault unless the option decides it."""
     for column in ("base_power", "frequency", "study_temperature"):
         given = [row for row in rows if column in row.number]
-        if column == "frequency" and given:
-            options.written_frequency = given[0].number[column].value
+        if column == "frequency":
+            options.written_frequencies = tuple({row.number[column].value: 0 for row in given})
         if not math.isnan(getattr(options, column)) or not given:
             continue
         first = given[0]
