@@ -74,6 +74,9 @@ def check_target(folder: Path, force: bool) -> None:
     """Refuse a folder that holds something, unless forced; nothing is changed."""
     if folder.exists() and not folder.is_dir():
         raise BranchwrightError([f"{folder}: is a file; name a folder for the output"])
+    above = next(parent for parent in folder.resolve().parents if parent.exists())
+    if not above.is_dir():
+        raise BranchwrightError([f"{folder}: {above} is a file; name a folder for the output"])
     if folder.exists() and any(folder.iterdir()) and not force:
         raise BranchwrightError(
             [f"{folder}: is not empty; name another folder, or add --force to replace the "

@@ -214,6 +214,11 @@ def _resistances(plant: Plant, units: Table) -> None:
             value[rows], half[rows] = tests[column][mine], tests.half_digit[column][mine]
             units.set(out, value)
             units.half_digit[out] = half
+        spread = np.full(units.n, np.nan)
+        spread[rows] = tests["ohms_spread"][mine]
+        units.set(f"ohms_{side}_spread", spread)
+        units.text[f"ohms_{side}"] = np.full(units.n, "", dtype=object)
+        units.text[f"ohms_{side}"][rows] = tests.text["ohms"][mine]
         units.heading[f"ohms_{side}"] = f"tests.resistance.{side}"
         line = np.zeros(units.n, dtype=np.int32)
         line[rows] = tests.line["ohms"][mine]

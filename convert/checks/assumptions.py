@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 from typing import Any
 
@@ -13,6 +14,9 @@ from ..gates import at_limit, at_unit, each, needs_temperature, place, printed, 
 from ..plant import Plant, Status, Table
 from ..quantity import show
 from ..standards import COMMON_PRACTICE, STANDARDS, winding_constant
+
+#: no-load volts further from rated than this are seldom meant
+NO_LOAD_BAND = 0.10
 
 
 def rules(plant: Plant, units: Table, model: str) -> Iterator[Finding]:
@@ -160,14 +164,23 @@ def _facts(units: Table) -> Iterator[Finding]:
 def _no_load_volts(units: Table) -> Iterator[Finding]:
     ratio = units["oc_rated_volts"] / units["oc_volts"]
     digit = np.nan_to_num(units.half_digit["oc_volts"]) / units["oc_volts"]
+    turns = units["u_hv"] / units["u_lv"]
 
     def fill(row: int) -> Finding:
+        far = abs(ratio[row] - 1) > NO_LOAD_BAND
+        slips = (
+            (math.sqrt(3.0), "phase volts entered as line volts (√3)"),
+            (turns[row], "the wrong side said to be energised"),
+            (1 / turns[row], "the wrong side said to be energised"),
+        )
+        cause = "; or ".join(t for f, t in slips if far and abs(math.log(ratio[row] / f)) < 0.03)
         return Finding(
-            Severity.NOTE, "", "no-load-not-at-rated-volts", place(units, "oc_volts", row),
+            Severity.CAUTION if far else Severity.NOTE, "", "no-load-not-at-rated-volts",
+            place(units, "oc_volts", row),
             f"{printed(units, 'oc_volts', row=row)}, {100 / ratio[row]:.4g} % of rated",
             "readings at rated volts",
             f"linear branch: loss ×{ratio[row] ** 2:.4f}, current ×{ratio[row]:.4f}; a core that "
-            "saturates draws more above rated volts", "",
+            "saturates draws more above rated volts", cause,
             "linear shunt branch, common practice, no source",
         )  # fmt: skip
 

@@ -21,6 +21,10 @@ NOMINAL_BAND = 0.10
 STRAY_SHARE = 0.60
 #: three readings of one balanced test may differ by this share of their mean
 SPREAD = 0.02
+#: short-circuit impedance of power and distribution transformers lies between these
+IMPEDANCE_RANGE = (0.005, 0.40)
+#: where no standard is named, the plate is held to this
+PLATE_BAND = 0.10
 #: a factor is recognised within this share of it
 NEAR = 0.03
 _ROOT3 = math.sqrt(3.0)
@@ -45,6 +49,7 @@ def rules(plant: Plant, units: Table) -> Iterator[Finding]:
     yield from _nominal(plant, units)
     yield from _stated(units)
     yield from _spread(units)
+    yield from _range(units)
 
 
 def _stray(units: Table) -> Iterator[Finding]:
@@ -76,7 +81,7 @@ def _plate(plant: Plant, units: Table) -> Iterator[Finding]:
     plate = units["plate_impedance"]
     measured = np.abs(units["z_sc_reference"]) * units["plate_base"] / units["s"]
     named = units.word("certificate_standard")
-    tolerance = np.full(units.n, np.nan)
+    tolerance = np.full(units.n, PLATE_BAND)
     for name in STANDARDS:
         tolerance = np.where(named == name, impedance_tolerance(name, plate), tolerance)
     ratio = measured / plate
@@ -84,7 +89,8 @@ def _plate(plant: Plant, units: Table) -> Iterator[Finding]:
 
     def fill(row: int) -> Finding:
         return Finding(
-            Severity.CAUTION, "", "plate-impedance", place(units, "sc_volts", row),
+            Severity.CAUTION, "", "plate-impedance",
+            f"{place(units, 'sc_volts', row)}; {place(units, 'plate_impedance', row)}",
             f"{100 * measured[row]:.4g} % from "
             f"{printed(units, 'sc_volts', 'sc_amps', row=row)}, {100 * (ratio[row] - 1):+.1f} % "
             "off the plate",
@@ -93,7 +99,8 @@ def _plate(plant: Plant, units: Table) -> Iterator[Finding]:
             f"drop {100 * (ratio[row] - 1):+.0f} %, fault level {100 * (1 / ratio[row] - 1):+.0f} %"
             " against the plate",
             likely_slip(float(ratio[row]), stages.get(str(units.text["name"][row]), ())),
-            f"{named[row]}, tolerance on the short-circuit impedance (from memory)",
+            f"{named[row]}, tolerance on the short-circuit impedance (from memory)"
+            if named[row] else COMMON_PRACTICE,
         )  # fmt: skip
 
     bad = units.has("plate_impedance") & (np.abs(ratio - 1) > tolerance)
@@ -142,7 +149,7 @@ def _nominal(plant: Plant, units: Table) -> Iterator[Finding]:
                 place(units, f"{side}_rated_voltage", row),
                 f"{against_nominal(plant, units, side, row)}: {ratio[row]:.4g} of nominal",
                 f"within {100 * NOMINAL_BAND:g} % of nominal",
-                f"the impedance base moves by {ratio[row] ** 2:.3g}", cause, COMMON_PRACTICE,
+                f"the impedance base is {ratio[row] ** 2:.3g} of the nominal one", cause, COMMON_PRACTICE,
             )  # fmt: skip
 
         yield from each(units, np.abs(ratio - 1) > NOMINAL_BAND, fill)
@@ -191,9 +198,8 @@ def _stated(units: Table) -> Iterator[Finding]:
                 "readings and results of one certificate agree within their printed digits",
             )  # fmt: skip
 
-        beyond = (off < np.minimum(bounds, 0) - own - half) | (
-            off > np.maximum(bounds, 0) + own + half
-        )
+        slack = own + half
+        beyond = (off < np.minimum(bounds, 0) - slack) | (off > np.maximum(bounds, 0) + slack)
         yield from each(units, measured & beyond, fill)
 
 
@@ -228,7 +234,7 @@ def _carried(units: Table) -> tuple[Any, Any, Any]:
 
 
 def _spread(units: Table) -> Iterator[Finding]:
-    for column in ("oc_volts", "sc_volts", "sc_amps"):
+    for column in ("oc_volts", "sc_volts", "sc_amps", "ohms_hv", "ohms_lv"):
         spread = units[f"{column}_spread"]
 
         def fill(row: int, column: str = column, spread: Any = spread) -> Finding:
@@ -241,3 +247,19 @@ def _spread(units: Table) -> Iterator[Finding]:
             )  # fmt: skip
 
         yield from each(units, spread > SPREAD, fill)
+
+
+def _range(units: Table) -> Iterator[Finding]:
+    z = np.abs(units["z_sc_study"])
+    low, high = IMPEDANCE_RANGE
+
+    def fill(row: int) -> Finding:
+        return Finding(
+            Severity.CAUTION, "", "impedance-range", place(units, "sc_volts", row),
+            f"uk {100 * z[row]:.4g} % from {printed(units, 'sc_volts', 'sc_amps', row=row)}",
+            f"{100 * low:g} to {100 * high:g} %", "drop and fault level follow it",
+            "the wrong side said to be fed (off by the square of the ratio), another unit's "
+            "rating, or volts and amps of different tests", COMMON_PRACTICE,
+        )  # fmt: skip
+
+    yield from each(units, (z < low) | (z > high), fill)
