@@ -76,7 +76,7 @@ def check_target(folder: Path, force: bool) -> None:
         raise BranchwrightError([f"{folder}: is a file; name a folder for the output"])
     above = next(parent for parent in folder.resolve().parents if parent.exists())
     if not above.is_dir():
-        raise BranchwrightError([f"{folder}: {above} is a file; name a folder for the output"])
+        raise BranchwrightError([f"{folder}: {above} is a file; nothing was written"])
     if folder.exists() and any(folder.iterdir()) and not force:
         raise BranchwrightError(
             [f"{folder}: is not empty; name another folder, or add --force to replace the "

@@ -194,8 +194,10 @@ def test_amps_that_were_mistyped_are_in_the_finding_as_printed(tmp_path: Path):
 def test_an_impedance_that_no_transformer_has_is_not_silent_without_a_plate(tmp_path: Path):
     # HV's volts and amps said to be LV's: uk is 36 times too large, 360 %
     text = sheet(unit(("fed: hv", "fed: lv"), ("    plate_impedance: 10.00 %\n", "")))
-    cautions = [f for f in findings(tmp_path, text) if f.severity is Severity.CAUTION]
-    assert [f for f in cautions if "360" in f.found and "side" in f.likely_cause]
+    finding = only(findings(tmp_path, text), "impedance-range")
+    assert finding.severity is Severity.CAUTION
+    assert "360 %" in finding.found
+    assert "side" in finding.likely_cause
 
 
 # --- stray loss ---------------------------------------------------------------------------------

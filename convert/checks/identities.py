@@ -149,7 +149,8 @@ def _nominal(plant: Plant, units: Table) -> Iterator[Finding]:
                 place(units, f"{side}_rated_voltage", row),
                 f"{against_nominal(plant, units, side, row)}: {ratio[row]:.4g} of nominal",
                 f"within {100 * NOMINAL_BAND:g} % of nominal",
-                f"the impedance base is {ratio[row] ** 2:.3g} of the nominal one", cause, COMMON_PRACTICE,
+                f"the impedance base is {ratio[row] ** 2:.3g} of the nominal one", cause,
+                COMMON_PRACTICE,
             )  # fmt: skip
 
         yield from each(units, np.abs(ratio - 1) > NOMINAL_BAND, fill)
