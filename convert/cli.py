@@ -133,7 +133,8 @@ def main() -> None:
 @_inputs
 @click.option("--out", required=True, type=PATH, help="Folder for the results; new or empty.")
 @_with_study_options
-@click.option("--network/--no-network", default=True, help="Write the network files, or not.")
+@click.option("--network/--no-network", default=None,
+              help="Write the network files, or not; above 1,000 units only if asked.")  # fmt: skip
 @click.option("--strict", is_flag=True, help="Write nothing if any unit has an error.")
 @_force
 @_format
@@ -149,7 +150,9 @@ def build(inputs: tuple[Path, ...], out: Path, **options: Any) -> int:
     result = study.build(
         plant, model=options["model"], strict=options["strict"], options=shown, progress=_progress
     )
-    written = result.write(out, network=options["network"], force=options["force"])
+    wanted = options["network"]
+    network = len(result.branches) <= study.FLEET if wanted is None else wanted
+    written = result.write(out, network=network, force=options["force"])
     _print(study_text(result, out, written), lambda: study_data(result), options["form"])
     return 0 if result.passed and not result.left_out else 1
 

@@ -8,6 +8,7 @@ regulation.csv. `quantity` opens with the side: `lv amps`; the words `volts appl
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -163,6 +164,15 @@ def _connection(plant: Plant, units: Table) -> list[Any]:
     note = "30° an hour, and the leg's angle at no load"
     blocks.append(("study", "phase shift", "lv angle", group, note, turned))
     return blocks
+
+
+def one_point(system: System) -> System:
+    """Return the system with one load point: the largest load, the first power factor."""
+    return replace(
+        system,
+        load_fractions=(max(system.load_fractions),),
+        power_factors=system.power_factors[:1],
+    )
 
 
 def regulation_points(system: System, units: Table) -> Columns:

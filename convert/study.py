@@ -6,7 +6,7 @@ import datetime
 import platform
 import tempfile
 from collections.abc import Callable, Sequence
-from dataclasses import asdict, dataclass, field
+from dataclasses import asdict, dataclass, field, replace
 from functools import cached_property
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
@@ -26,6 +26,9 @@ CAUTION = (
     "place, which come first. Never set protection, switch, parallel or energise on these numbers "
     "alone; fault-level and arc-energy studies use their own standard."
 )
+#: a study of more units than this is a fleet: one load point, notes one row a rule, and networks
+#: are written on request only
+FLEET = 1000
 #: one refusal of every unit; also what --strict makes of any
 NOTHING_LEFT = "no unit could be reduced: nothing was written"
 
@@ -134,6 +137,16 @@ class Study:
         }
 
 
+def one_note_a_rule(findings: Sequence[Finding]) -> list[Finding]:
+    """Return findings with the notes of each rule drawn together: the first, and how many."""
+    notes: dict[str, list[Finding]] = {}
+    for finding in findings:
+        if finding.severity is Severity.NOTE:
+            notes.setdefault(finding.rule, []).append(finding)
+    drawn = [replace(alike[0], units=sum(note.units for note in alike)) for alike in notes.values()]
+    return [*(f for f in findings if f.severity is not Severity.NOTE), *drawn]
+
+
 def findings_table(findings: Sequence[Finding]) -> pd.DataFrame:
     """Return findings as a table, columns as in findings.csv."""
     rows = [{**asdict(finding), "severity": finding.severity.value} for finding in findings]
@@ -215,7 +228,9 @@ def build(
     branches = pd.DataFrame(entries.branch_table(plant, units, model))
     table = pd.DataFrame(unitsheet.table(plant, units))
     expected = pd.DataFrame(expectation.retest(plant, units, model))
-    points = pd.DataFrame(expectation.regulation_points(plant.system, units))
+    fleet = units.n > FLEET
+    system = expectation.one_point(plant.system) if fleet else plant.system
+    points = pd.DataFrame(expectation.regulation_points(system, units))
     losses = pd.DataFrame(expectation.losses(plant.system, units))
     texts, sources = _networks(plant, units)
     progress("loading the load-flow library")
@@ -227,6 +242,7 @@ def build(
         )
     position = {name: at for at, name in enumerate(plant.transformers.text["name"])}
     findings = [*findings, *sources, *failures]
+    findings = one_note_a_rule(findings) if fleet else findings
     findings.sort(key=lambda f: position.get(f.subject, len(position)))
     return Study(
         plant, model, branches, table, losses, retest, regulation, findings, left_out, texts,

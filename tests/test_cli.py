@@ -731,3 +731,11 @@ def test_a_signal_from_outside_keeps_no_new_file(tmp_path: Path):
     _, errors = process.communicate()
     assert (process.returncode, errors) == (130, "interrupted; no new file was kept\n")
     assert below(tmp_path) == ["mill.yaml", "scratch"]
+
+
+def test_a_fleet_s_networks_are_written_on_request_only(tmp_path: Path, monkeypatch):
+    monkeypatch.setattr(study, "FLEET", 1)
+    path = write(tmp_path, sheet(unit(), unit(name="T2")))
+    for name, options, there in (("a", (), False), ("b", ("--network",), True)):
+        assert run("build", path, "--out", tmp_path / name, *options).exit_code == 0
+        assert (tmp_path / name / "network.json").exists() is there

@@ -13,6 +13,7 @@ from pandapower.toolbox import nets_equal
 from test_entries import HEAD, UNITS, plant
 
 from convert import BranchwrightError, build, prove, read
+from convert import study as study_room
 from convert.study import Study, examine
 
 #: design of the outputs: every column, in order
@@ -400,3 +401,20 @@ def test_a_second_formula_for_a_value_is_recorded_too(home):
     count = {name: sum(step["out"] == "i0" for step in listed)
              for name, listed in (("both", both), ("alone", alone))}  # fmt: skip
     assert count == {"both": 2, "alone": 1}
+
+
+def test_a_fleet_has_one_load_point_and_one_note_a_rule(home, monkeypatch):
+    """The contract's rule above 1,000 units, shown on three."""
+    monkeypatch.setattr(study_room, "FLEET", 2)
+    names = ("Given", "Twin", "Third")
+    fleet = build(plant(home, dict.fromkeys(names, UNITS["Given"])))
+    points = fleet.regulation[["load_fraction", "power_factor", "sense"]].drop_duplicates()
+    assert points.to_numpy().tolist() == [[1.0, 0.8, "lagging"]]
+    assert fleet.passed
+    notes = fleet.findings.query("severity == 'note'")
+    assert not notes["rule"].duplicated().any()
+    assert notes.set_index("rule").at["no-load-loss-given", "units"] == len(names)
+    monkeypatch.setattr(study_room, "FLEET", 3)
+    station = build(plant(home, dict.fromkeys(names, UNITS["Given"])))
+    assert len(station.regulation) == 16 * len(fleet.regulation)
+    assert station.findings["rule"].tolist().count("no-load-loss-given") == len(names)
