@@ -416,5 +416,5 @@ def test_a_fleet_has_one_load_point_and_one_note_a_rule(home, monkeypatch):
     assert notes.set_index("rule").at["no-load-loss-given", "units"] == len(names)
     monkeypatch.setattr(study_room, "FLEET", 3)
     station = build(plant(home, dict.fromkeys(names, UNITS["Given"])))
-    assert len(station.regulation) == 16 * len(fleet.regulation)
+    assert len(station.regulation) == 6 * len(fleet.regulation)  # the points of its sheet
     assert station.findings["rule"].tolist().count("no-load-loss-given") == len(names)
