@@ -5,6 +5,7 @@ pandapower is imported when a network is loaded or solved, not before.
 
 from __future__ import annotations
 
+import warnings
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
@@ -55,13 +56,15 @@ class Rows:
 class Flow:
     """Results of one load flow a row, NaN where it found none: (n, 2) for HV and LV.
 
-    vm [pu], va [deg] at the buses; p [MW], q [Mvar], i [kA] into the transformer.
+    vm [pu], va [deg] at the buses; p [MW], i [kA] into the transformer; why: (n,) text, what
+    kept a row from a result.
     """
 
     vm: np.ndarray[Any, Any]
     va: np.ndarray[Any, Any]
     p: np.ndarray[Any, Any]
     i: np.ndarray[Any, Any]
+    why: np.ndarray[Any, Any]
 
 
 def read_network(path: Path) -> Any:
@@ -80,6 +83,15 @@ def read_network(path: Path) -> Any:
         )
         raise BranchwrightError([f"{path}: lacks the columns {listed}"])
     return net
+
+
+def quiet_runpp(net: Any, **options: Any) -> None:
+    """Run a load flow; the library's own numerical warnings tell a planner nothing."""
+    import pandapower as pp
+
+    with warnings.catch_warnings(), np.errstate(all="ignore"):
+        warnings.simplefilter("ignore")
+        pp.runpp(net, numba=False, **options)
 
 
 def sound(rows: Rows) -> np.ndarray[Any, Any]:
@@ -125,8 +137,11 @@ def solve(
         NaN for islands without a solution, or whose power does not balance.
     """
     n = len(rows.trafo)
-    out = Flow(*(np.full((n, 2), np.nan) for _ in range(4)))
-    usable = np.flatnonzero(sound(rows))
+    good = sound(rows)
+    why = np.where(good, "", "numbers that no load flow can take").astype(object)
+    vm, va, p, i = np.full((4, n, 2), np.nan)
+    out = Flow(vm, va, p, i, why)
+    usable = np.flatnonzero(good)
     decade = np.floor(np.log10(rows.trafo["sn_mva"].to_numpy()[usable].astype(float)))
     for size in np.unique(decade):
         alike = usable[decade == size]
@@ -148,15 +163,14 @@ def _solve_chunk(
     out: Flow,
 ) -> None:
     """Solve the islands `at`; where the library finds no solution, halve until it is one unit."""
-    import pandapower as pp
-
     try:
         net = _islands(rows.take(at), source, load, power)
-        pp.runpp(
-            net, numba=False, check_connectivity=False, calculate_voltage_angles=angles,
+        quiet_runpp(
+            net, check_connectivity=False, calculate_voltage_angles=angles,
             init="dc" if angles else "flat", tolerance_mva=_FLOW_TOLERANCE_MVA, max_iteration=60,
         )  # fmt: skip
-    except Exception:  # an edited row can make the library raise anything; it has no one base
+    except Exception as error:  # an edited row can make the library raise anything
+        out.why[at] = f"{type(error).__name__}: {error}"[:120]
         if len(at) > 1:
             for half in (slice(0, len(at) // 2), slice(len(at) // 2, None)):
                 shunt, current = (None if part is None else part[half] for part in load)
@@ -170,6 +184,8 @@ def _solve_chunk(
     if near_rated:
         good &= ((vm > 0.5) & (vm < 1.5)).all(axis=1)
     done = at[good]
+    out.why[at] = "volts or powers that do not fit: no true solution"
+    out.why[done] = ""
     out.vm[done] = vm[good]
     out.va[done] = net.res_bus["va_degree"].to_numpy().reshape(2, n).T[good]
     for result, name in ((out.p, "p_{}_mw"), (out.i, "i_{}_ka")):

@@ -17,7 +17,7 @@ import pandas as pd
 
 from . import entries
 from .errors import Finding, Severity
-from .flow import Flow, Rows, read_network, solve
+from .flow import Flow, Rows, quiet_runpp, read_network, solve
 
 if TYPE_CHECKING:
     from pandas import DataFrame
@@ -74,7 +74,8 @@ def prove(
     retested = _compare(retest, pd.concat(found, ignore_index=True), branches)
     retested = pd.concat([retested, _plain_flows(networks)], ignore_index=True)
     regulated = _regulation(study, branches, regulation)
-    return retested, regulated, _failures(retested, regulated)
+    findings = _failures(retested, regulated)
+    return retested.drop(columns="why"), regulated, findings
 
 
 def _study_rows(networks: dict[str, Any], branches: DataFrame) -> Rows:
@@ -185,6 +186,7 @@ def _reading(rows: Rows, flow: Flow, state: str, test: str, side: Any, *words: s
                     "test": test,
                     "quantity": [f"{s} {word}" for s in name],
                     "retest": value[word.split()[0]],
+                    "why": flow.why,
                 }
             )
             for word in words
@@ -226,6 +228,7 @@ def _angles(rows: Rows) -> DataFrame:
             "test": "phase shift",
             "quantity": "lv angle",
             "retest": flow.va[:, 1],
+            "why": flow.why,
         }
     )
 
@@ -259,13 +262,11 @@ def _rated(joined: DataFrame, branches: DataFrame) -> Any:
 
 def _plain_flows(networks: dict[str, Any]) -> DataFrame:
     """Run each file as a planner would: every busbar in service must get a voltage."""
-    import pandapower as pp
-
     rows = []
     for file, net in networks.items():
         trial = copy.deepcopy(net)
         try:
-            pp.runpp(trial, numba=False)
+            quiet_runpp(trial)
             empty = int(trial.res_bus["vm_pu"][trial.bus["in_service"]].isna().sum())
         except Exception:  # an edited file can make the library raise anything
             empty = max(1, len(trial.bus))
@@ -341,8 +342,7 @@ def _failures(retest: DataFrame, regulation: DataFrame) -> list[Finding]:
                 f"{worst['expected']:.10g} {worst['unit']}",
                 f"{len(rows)} readings of the re-run differ: " + ", ".join(
                     sorted({f"{r.test} {r.quantity}" for r in rows.itertuples()})),
-                "the written row is not the tested transformer",
-                "re-run of the tests on the written network",
+                _cause(worst), "re-run of the tests on the written network",
             )
         )  # fmt: skip
     bad = regulation[regulation["verdict"] == "fail"]
@@ -361,6 +361,14 @@ def _failures(retest: DataFrame, regulation: DataFrame) -> list[Finding]:
             )
         )  # fmt: skip
     return findings
+
+
+def _cause(worst: Any) -> str:
+    """Say why a reading differs: no result of the load flow, or another transformer's."""
+    why = worst["why"]
+    if isinstance(why, str) and why:
+        return f"the load flow gave no result: {why}"
+    return "the written row is not the tested transformer"
 
 
 def summary(retest: DataFrame, regulation: DataFrame) -> dict[str, float]:

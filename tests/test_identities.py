@@ -263,6 +263,13 @@ def test_stray_loss_may_be_nothing_to_sixty_percent(tmp_path: Path, watts: str, 
     assert rules(found) == ({"stray-loss"} if fires else set())
 
 
+def test_stray_loss_below_nothing_by_the_printed_digits_alone_is_no_slip(tmp_path: Path):
+    # I²R is 3·174.9546²·0.52 + 3·1049.728²·0.010 = 80.809 kW, printed as 81 kW or 80.8 kW
+    for watts, fires in (("81 kW", False), ("80.8 kW", False), ("80.5 kW", True)):
+        found = findings(tmp_path, sheet(unit((WATTS, f"watts: {watts}"), resistance=True)))
+        assert ("stray-loss" in rules(found)) is fires
+
+
 def test_the_ohms_of_a_delta_winding_are_a_third_in_the_star(tmp_path: Path):
     # 20 mΩ between lines of a delta is a winding of 30 mΩ, so that the sheet stays clean
     winding = ("          between: line and line\n          ohms: 20.00 mohm",

@@ -73,7 +73,13 @@ def _stray(units: Table) -> Iterator[Finding]:
             COMMON_PRACTICE if high else source,
         )  # fmt: skip
 
-    bad = separable(units) & ((share < 0) | (share > STRAY_SHARE))
+    slack = _relative_half(units, "sc", watts=1, amps=2) + 1e-12
+    for side in ("hv", "lv"):
+        part = units[f"p_{side}_tested"] / units["pk_tested"]
+        slack = slack + np.nan_to_num(
+            part * units.half_digit[f"ohms_{side}"] / units[f"ohms_{side}"]
+        )
+    bad = separable(units) & ((share < -slack) | (share > STRAY_SHARE))
     yield from each(units, bad, fill)
 
 
