@@ -14,7 +14,7 @@ from . import circuit, gates, perunit
 from .errors import Finding
 from .gather import gather
 from .plant import Mask, Plant, Status, Step, Table
-from .reduction import metering, open_circuit, resistance, short_circuit, temperature
+from .reduction import open_circuit, resistance, short_circuit, temperature
 
 STATES = ("tested", "reference", "study")
 MODELS = ("T", "cantilever")
@@ -40,8 +40,8 @@ def run(plant: Plant, model: str = "T") -> tuple[Table, list[Finding]]:
     units = gather(plant)
     passed, findings = gates.check(plant, units)
     units = units.take(np.flatnonzero(passed))
-    reduce_open_circuit(units)
     reduce_short_circuit(units)
+    reduce_open_circuit(units)
     carry_to_temperatures(units)
     make_circuit(units, model)
     to_system_base(units)
@@ -53,21 +53,22 @@ def reduce_open_circuit(units: Table) -> None:
     fed = units["oc_from"] == 1
     units.set("oc_rated_volts", np.where(fed, units["u_hv"], units["u_lv"]))
     units.set("oc_rated_amps", np.where(fed, units["i_hv"], units["i_lv"]))
-    limit = gates.at_limit(units)
-    if limit.any():
-        units.put("oc_amps", metering.amps_of_watts, where=limit, at_least=Status.ASSUMED,
-                  p="oc_watts", u="oc_volts", phases="phases")  # fmt: skip
     units.put("p0", open_circuit.no_load_loss_at_rated_volts,
               p="oc_watts", u="oc_volts", u_r="oc_rated_volts")  # fmt: skip
     units.put("i0_amps", open_circuit.no_load_current_at_rated_volts,
               i="oc_amps", u="oc_volts", u_r="oc_rated_volts")  # fmt: skip
     units.put("i0", open_circuit.no_load_current_per_unit, i_0="i0_amps", i_r="oc_rated_amps")
     units.put("g_oc", open_circuit.shunt_conductance, p_0="p0", s="s")
-    if limit.any():  # a power factor of exactly one: no rounding may make the root negative
-        units.put("i0", open_circuit.shunt_conductance, where=limit, at_least=Status.ASSUMED,
-                  p_0="p0", s="s")  # fmt: skip
+    # within the printed digits i0 may be less than any circuit draws: no magnetising branch is left
+    units.put("i0_least", open_circuit.least_no_load_current, g="g_oc", x="x")
+    limit = units["i0"] < units["i0_least"]
+    units.set("no_magnetising", limit)
+    units.put("i0", open_circuit.least_no_load_current, where=limit, at_least=Status.ASSUMED,
+              g="g_oc", x="x")  # fmt: skip
     units.put("b_oc", open_circuit.shunt_susceptance, i_0="i0", g="g_oc")
     units.put("y_oc", open_circuit.admittance, g="g_oc", b="b_oc")
+    units.put("oc_amps", circuit.test_amps, where=limit, at_least=Status.ASSUMED, y="y_oc",
+              u="oc_volts", u_r="oc_rated_volts", i_r="oc_rated_amps")  # fmt: skip
 
 
 def reduce_short_circuit(units: Table) -> None:

@@ -237,17 +237,24 @@ def rebase(
 
 
 @main.command(short_help="Print a sheet to begin with.")
-@click.argument("kind", type=click.Choice(["station", "sample"]))
+@click.argument("kind", type=click.Choice(["station", "sample", "feeder"]))
 @click.option("--out", type=PATH, help="Write the sheet to this file instead of printing it.")
 @_force
 @_guarded
 def start(kind: str, out: Path | None, force: bool) -> int:
-    """Print a sheet to begin with: a commented one (station) or the sample substation (sample)."""
+    """Print a sheet to begin with.
+
+    station: a commented sheet; sample: the sample substation; feeder: the sample feeder, with
+    single-phase units.
+    """
     from . import folder
     from .intake import fields, template
 
-    sample = fields.resource("cases", "substation", "station.yaml")
-    text = template.station() if kind == "station" else sample.read_text(encoding="utf-8")
+    folders = {"sample": "substation", "feeder": "feeder"}
+    text = template.station()
+    if kind in folders:
+        sample = fields.resource("cases", folders[kind], "station.yaml")
+        text = sample.read_text(encoding="utf-8")
     if out is None:
         click.echo(text, nl=False)
         return 0

@@ -61,7 +61,7 @@ def branch_table(plant: Plant, units: Table, model: str) -> Columns:
         "x_share_from": units["x_share_from"],
         "model": np.full(n, model, dtype=object),
         "winding_temp_degc": units["t_study"],
-        "tap": np.full(n, "principal", dtype=object),
+        "tap": units.word("sc_tap"),
         "status": np.array([Status(code).name.lower() for code in worst], dtype=object),
     }
 

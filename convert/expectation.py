@@ -223,6 +223,8 @@ def _hand(units: Table, k: Any, c: Any, s: Any) -> tuple[Any, Any]:
         np.abs(regulation.cross_component(z, c, s)), np.abs(regulation.cross_component(z_t, c, s))
     )
     k_max = k * np.maximum(1, np.abs(a))
+    with np.errstate(invalid="ignore"):  # beyond k q = 1 no load flow exists; the bound is NaN
+        iec = regulation.bound_iec(z, z_t, a, q, k, k_max)
     hand = (
         regulation.regulation_phasor(a, b, k, c, s),
         regulation.regulation_ieee(z.real, z.imag, k, c, s),
@@ -231,7 +233,7 @@ def _hand(units: Table, k: Any, c: Any, s: Any) -> tuple[Any, Any]:
     bound = (
         np.full(hand[0].shape, 1e-9),
         regulation.bound_ieee(z, z_t, k),
-        regulation.bound_iec(z, z_t, a, q, k, k_max),
+        iec,
     )
     return np.stack(hand, axis=-1), np.stack(bound, axis=-1)
 

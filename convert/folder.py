@@ -45,7 +45,7 @@ def _escaped(cell: str) -> str:
 
 def read_csv(path: Path) -> pd.DataFrame:
     """Read a table that `csv_text` wrote, text and floats as they were."""
-    text = {"name", "from_busbar", "to_busbar", "certificate", "correction", "stage"}
+    text = {"name", "from_busbar", "to_busbar", "certificate", "correction", "stage", "tap"}
     table = pd.read_csv(path, float_precision="round_trip", keep_default_na=False,
                         na_values={}, dtype=dict.fromkeys(text, str))  # fmt: skip
     for column in table.columns:

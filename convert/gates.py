@@ -35,7 +35,10 @@ def place(units: Table, column: str, row: int) -> str:
 
 def at_unit(units: Table, key: str, row: int) -> str:
     """Return `file:line key` of a key that a unit lacks: the line is the unit's own."""
-    return f"{units.text['file'][row]}:{int(units.line['row'][row])} {key}"
+    line = int(units.line["row"][row])
+    if key.startswith("tests.short_circuit."):  # a key of a test that is there
+        line = int(units.line["sc_watts"][row]) or line
+    return f"{units.text['file'][row]}:{line} {key}"
 
 
 def each(units: Table, where: Mask, fill: Row) -> Iterator[Finding]:
@@ -156,9 +159,3 @@ def needs_temperature(units: Table) -> Mask:
     moved = (t != units["t_reference"]) | (t != units["t_study"])
     wanted = units.word("split") == "resistances"
     return np.asarray((moved | wanted) & units.has("sc_temperature"), dtype=np.bool_)
-
-
-def at_limit(units: Table) -> Mask:
-    """Return (n,) bool: no-load cosφ above one, by no more than the printed digits allow."""
-    over = (units["oc_cosphi"] > 1) & (units["oc_cosphi_low"] <= 1)
-    return np.asarray(over, dtype=np.bool_)

@@ -136,6 +136,7 @@ def _test(tests: Table, units: Table, test: str, side: str) -> None:
             percent = np.full(units.n, np.nan)
             percent[rows] = tests[f"{column}_spread"]
             units.set(f"{out}_spread", percent)
+    units.text[f"{test}_tap"] = np.where(has, _spread(tests.word("tap"), spread), "")
     words = {key: np.where(has, _spread(tests.word(key), spread), "") for key in
              (side, "between", "watts_are")}  # fmt: skip
     units.set(f"{test}_from", np.where(has, words[side] == "hv", np.nan))

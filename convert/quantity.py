@@ -164,7 +164,8 @@ def _mend_unit(number: str, word: str, words: tuple[str, ...]) -> str:
             return f"{word} is the unit of {other[2]}: write one of {choice}"
     near = [w for w in words if w.lower().lstrip("°") == word.lower()]
     hint = f"did you mean {' or '.join(near)}?" if near else f"the units read here are {choice}"
-    return f"unit {word!r} is not known ({hint}); m is milli, M is mega"
+    prefixes = "; m is milli, M is mega" if words[0] in ("V", "A", "W", "VA", "ohm") else ""
+    return f"unit {word!r} is not known ({hint}){prefixes}"
 
 
 def show(value: float, dimension: str, digits: int = 6) -> str:

@@ -30,6 +30,7 @@ def study_text(study: Study, target: Path | None, written: Sequence[str]) -> str
     blocks += [branch_text(study.branches)] if len(study.branches) <= MOST_LISTED else []
     blocks.append(findings_text(study.problems))
     blocks.append(proof_text(study.retest, study.regulation))
+    blocks.append(f"Findings: {_counts(study.problems)}; read them before use.")
     if target is not None:
         blocks.append(_wrap(f"Files in {target}: " + ", ".join(written)))
     blocks.append(_wrap(CAUTION))
@@ -69,7 +70,10 @@ def _retest_lines(retest: pd.DataFrame) -> Iterator[str]:
     """Expected and re-run readings unit by unit, then the plain load flow of each file."""
     flows = retest["unit"] == "count"
     shown = retest["name"].isin(_first(retest["name"])) | (retest["verdict"] == "fail")
-    listed = _rows(retest[shown & ~flows])
+    # what drives a test, and the branch table, are shown where they fail
+    given = retest["quantity"].str.endswith("applied") | (retest["test"] == proof.BRANCH_TABLE)
+    given &= retest["verdict"] == "pass"
+    listed = _rows(retest[shown & ~flows & ~given])
     head, *body = grid(
         ("state", "test", "quantity", "certificate", "expected", "re-run", "diff %", "verdict"),
         [
@@ -129,7 +133,7 @@ def verdict_line(retest: pd.DataFrame, regulation: pd.DataFrame) -> str:
     )
     verdict = "PASS" if (read, held) == (reads, points) else "FAIL"
     return _wrap(
-        f"Proof {verdict}: {read} of {reads} readings agree, worst difference "
+        f"Proof {verdict}: {read} of {reads} checks agree, worst difference "
         f"{worst['retest_worst_percent']:.1e} % (limit {100 * proof.TOLERANCE:.0e} %); {held} of "
         f"{points} regulation points within their bound (largest use: {use})."
     )
@@ -151,11 +155,15 @@ def findings_text(findings: Sequence[Finding]) -> str:
 
 def check_text(findings: Sequence[Finding], units: int, left_out: Sequence[str]) -> str:
     """Return what `check` prints."""
-    counts = {s: sum(f.severity is s for f in findings) for s in Severity}
-    total = ", ".join(f"{n} {severity.value}{'s' * (n != 1)}" for severity, n in counts.items())
-    can = f"{units} unit{'s' * (units != 1)} can be built: {total}."
+    can = f"{units} unit{'s' * (units != 1)} can be built: {_counts(findings)}."
     blocks = [findings_text(findings), can, *_left_out(left_out)]
     return "\n\n".join(blocks)
+
+
+def _counts(findings: Sequence[Finding]) -> str:
+    """Return how many findings there are of each severity."""
+    counts = {s: sum(f.severity is s for f in findings) for s in Severity}
+    return ", ".join(f"{n} {severity.value}{'s' * (n != 1)}" for severity, n in counts.items())
 
 
 def _left_out(names: Sequence[str]) -> list[str]:

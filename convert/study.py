@@ -12,6 +12,7 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pandas as pd
 
 from . import chain, checks, entries, expectation, folder, proof, unitsheet
@@ -26,6 +27,21 @@ CAUTION = (
     "place, which come first. Never set protection, switch, parallel or energise on these numbers "
     "alone; fault-level and arc-energy studies use their own standard."
 )
+#: which step makes which column, for a reader who follows a number back
+COLUMNS = {
+    "branches.csv r_pu, x_pu": "z_system, real and imaginary part",
+    "branches.csv g_pu, b_pu": "y_system, real and imaginary part",
+    "branches.csv ratio_pu": "ratio",
+    "units.csv uk_percent, ur_percent, ux_percent": "z_sc of the state, on the row's rating",
+    "units.csv i0_percent, p0_w": "y_oc, p0",
+    "units.csv pk_w, ohmic_hv_w, ohmic_lv_w, stray_w": "pk, p_hv, p_lv, p_stray of the state",
+    "units.csv r_own_pu, x_own_pu": "z_t of the state: the circuit's, not the test's",
+    "units.csv g_own_pu, b_own_pu": "y_m of the state: the circuit's, not the test's",
+    "network files vk_percent, vkr_percent": "100 |z_t_study|, 100 Re z_t_study",
+    "network files i0_percent, pfe_kw": "100 |y_m_study|, Re y_m_study times the rating",
+    "retest.csv expected": "the reading, or for the study state test_volts and test_watts",
+    "regulation.csv hand_percent": "regulation_phasor, regulation_ieee, drop_iec",
+}
 #: a study of more units than this is a fleet: one load point, notes one row a rule, and networks
 #: are written on request only
 FLEET = 1000
@@ -133,6 +149,7 @@ class Study:
             "left_out": self.left_out,
             "proof": proof.summary(self.retest, self.regulation),
             "steps": self.steps,
+            "columns": COLUMNS,
             "caution": CAUTION,
         }
 
@@ -177,7 +194,10 @@ def examine(plant: Plant, model: str = "T") -> tuple[Table, list[Finding], list[
         Names of the units with an error.
     """
     units, errors = chain.run(plant, model)
-    findings = [*errors, *checks.run(plant, units, model)]
+    found = checks.run(plant, units, model)
+    failed = [finding.subject for finding in found if finding.severity is Severity.ERROR]
+    units = units.take(np.flatnonzero(~np.isin(units.text["name"].astype(str), failed)))
+    findings = [*errors, *found]
     position = {name: at for at, name in enumerate(plant.transformers.text["name"])}
     findings.sort(key=lambda f: position.get(f.subject, len(position)))
     kept = set(units.text["name"])
@@ -272,7 +292,8 @@ def error_line(finding: Finding) -> str:
     """Return a finding as the one line that is printed for it."""
     parts = [f"{finding.subject}: {finding.reading}: read {finding.found}"]
     parts.append(f"expected {finding.expected}")
-    parts += [text for text in (finding.effect, finding.likely_cause) if text]
+    parts += [f"effect: {finding.effect}"] if finding.effect else []
+    parts += [f"likely cause: {finding.likely_cause}"] if finding.likely_cause else []
     return "; ".join(parts)
 
 
@@ -314,10 +335,14 @@ def _networks(plant: Plant, units: Table) -> tuple[dict[str, str], list[Finding]
 _PROVEN = {
     "branches": (
         ("name", "from_busbar", "to_busbar", "model"),
-        ("phases", "base_kv_from", "base_kv_to", "rated_kv_from", "rated_kv_to", "rated_mva",
-         "shift_deg", "r_share_from", "x_share_from"),
+        ("phases", "base_mva", "base_kv_from", "base_kv_to", "rated_kv_from", "rated_kv_to",
+         "rated_mva", "r_pu", "x_pu", "g_pu", "b_pu", "ratio_pu", "shift_deg", "r_share_from",
+         "x_share_from"),
     ),
-    "units": (("name", "state"), ("rated_mva", "r_pu", "x_pu", "g_pu", "b_pu")),
+    "units": (
+        ("name", "state"),
+        ("rated_mva", "r_own_pu", "x_own_pu", "g_own_pu", "b_own_pu"),
+    ),
     "retest": (("name", "state", "test", "quantity", "unit", "certificate"), ("expected",)),
     "regulation": (
         ("name", "sense", "method"),
@@ -378,6 +403,7 @@ def prove(
         listed = ", ".join(sorted(map(str, lacking)))
         raise BranchwrightError([f"{target}: no expected readings or regulation of {listed}"])
     expected = retest[[*proof.KEYS, "unit", "certificate", "correction", "expected"]]
-    expected = expected[expected["unit"] != "count"].reset_index(drop=True)
+    made_here = (expected["unit"] == "count") | (expected["test"] == proof.BRANCH_TABLE)
+    expected = expected[~made_here].reset_index(drop=True)
     points = regulation.drop(columns=["flow_percent", "difference_points", "verdict"])
     return proof.prove(target, branches, units, expected, points, progress)

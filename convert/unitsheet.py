@@ -11,6 +11,7 @@ import numpy as np
 
 from . import circuit, perunit
 from .chain import STATES
+from .gates import separable
 from .plant import Plant, Status, Table
 from .reduction import open_circuit
 
@@ -37,7 +38,7 @@ def table(plant: Plant, units: Table) -> Columns:
     at, stage, power, state = _rows(plant, units)
     rows = units.take(at)
     rows.set("s_stage", power)
-    for column in ("z_sc", "z_t", "z_from", "z_to", "y_m", "t", "pk"):
+    for column in ("z_sc", "z_t", "z_from", "z_to", "y_m", "t", "pk", "p_hv", "p_lv", "p_stray"):
         picked = np.choose(state, [rows[f"{column}_{name}"] for name in STATES])
         status = np.choose(state, [rows.status[f"{column}_{name}"] for name in STATES])
         rows.set(column, picked, status)
@@ -132,10 +133,11 @@ def _columns(rows: Table, stage: Any, state: Any) -> Columns:
         "i0_percent": 100 * np.abs(y),
         "p0_w": rows["p0"],
         "pk_w": rows["pk_own"],
-        "r_pu": z_t.real,
-        "x_pu": z_t.imag,
-        "g_pu": y_m.real,
-        "b_pu": y_m.imag,
+        **_losses(rows),
+        "r_own_pu": z_t.real,
+        "x_own_pu": z_t.imag,
+        "g_own_pu": y_m.real,
+        "b_own_pu": y_m.imag,
         "x_over_r": z.imag / z.real,
         "rated_amps_hv": rows["amps_hv"],
         "rated_amps_lv": rows["amps_lv"],
@@ -148,6 +150,14 @@ def _columns(rows: Table, stage: Any, state: Any) -> Columns:
     worst = rows.worst(("z_sc", "y_oc"))
     columns["status"] = np.array([Status(code).name.lower() for code in worst], dtype=object)
     return columns
+
+
+def _losses(rows: Table) -> Columns:
+    """I²R of each side and stray loss at the row's amps and temperature, where told apart."""
+    told = np.where(separable(rows), (rows["s_stage"] / rows["s"]) ** 2, np.nan)
+    parts = {"ohmic_hv": "p_hv", "ohmic_lv": "p_lv", "stray": "p_stray"}
+    losses = {f"{name}_w": told * rows[column] for name, column in parts.items()}
+    return losses | {f"k_{part}_degc": rows[f"k_{part}"] for part in ("hv", "lv", "stray")}
 
 
 def _side_columns(rows: Table, side: str) -> Columns:

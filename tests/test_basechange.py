@@ -180,7 +180,7 @@ def test_extra_columns_are_those_of_the_unit_table_on_any_base(home, table):
     for carried in (table, rebase(table, 37e6, moved(volts))):
         found = rebase(carried, extras=EXTRAS).set_index("name")
         for part in "rxgb":
-            np.testing.assert_allclose(found[f"{part}_own_pu"], rows[f"{part}_pu"], rtol=1e-13)
+            np.testing.assert_allclose(found[f"{part}_own_pu"], rows[f"{part}_own_pu"], rtol=1e-13)
         for end, side in (("from", "hv"), ("to", "lv")):
             for part in "rx":
                 legs = rows[f"{part}1_{side}_ohm"] + rows[f"{part}2_{side}_ohm"]

@@ -158,7 +158,7 @@ def test_the_other_standard_has_its_own_tolerance(tmp_path: Path):
 
 def test_a_plate_without_a_standard_is_said_not_to_be_compared(tmp_path: Path):
     text = beside(NO_STANDARD)
-    finding = one(tmp_path, text, "plate-not-compared")
+    finding = one(tmp_path, text, "plate-by-common-practice")
     assert finding.severity is Severity.NOTE
     assert f"mill.yaml:{line_in_t2(text, '  T2:')} " in finding.reading
     neither = sheet(unit(NO_STANDARD, ("    plate_impedance: 10.00 %\n", "")))
@@ -211,12 +211,13 @@ def test_an_impedance_that_no_transformer_has_is_not_silent_without_a_plate(tmp_
         ((WATTS, "watts: 32.00 kW"), "per-phase watts"),
     ],
 )
-def test_more_loss_in_the_ohms_than_was_read_is_a_caution(
+def test_more_loss_in_the_ohms_than_was_read_leaves_the_unit_out(
     tmp_path: Path, change: tuple[str, str], cause: str
 ):
     text = beside(change, resistance=True)
     finding = one(tmp_path, text, "stray-loss")
-    assert finding.severity is Severity.CAUTION
+    assert finding.severity is Severity.ERROR  # far beyond what readings can be out by
+    assert "left out" in finding.effect
     assert finding.found.startswith("stray loss -")
     assert cause in finding.likely_cause
     assert "I²R" in finding.found

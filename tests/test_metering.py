@@ -77,10 +77,3 @@ def test_line_volts_and_phase_volts_of_three_equal_phases():
     # 6350.85 V to neutral is 11 kV between lines (hand)
     assert metering.line_volts(6350.853) == pytest.approx(11e3, abs=1e-3)
     assert metering.total_watts(4.2e3) == pytest.approx(12.6e3)
-
-
-def test_amps_at_a_power_factor_of_one_carry_the_watts():
-    drive = metering.amps_of_watts(300.0, 400.0, 3)
-    phase_volts = 400.0 / np.sqrt(3)
-    assert 3 * phase_volts * drive == pytest.approx(300.0, rel=1e-15, abs=0)
-    assert metering.amps_of_watts(300.0, 240.0, 1) == pytest.approx(1.25)

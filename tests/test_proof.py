@@ -318,7 +318,7 @@ def test_a_network_file_that_is_none_is_refused_by_name(pair, text):
         ("branches.csv", "rated_mva", None),
         ("branches.csv", "base_kv_to", "low"),
         ("units.csv", "state", None),
-        ("units.csv", "r_pu", "low"),
+        ("units.csv", "r_own_pu", "low"),
         ("retest.csv", "expected", None),
         ("retest.csv", "expected", "low"),
         ("regulation.csv", "bound_points", None),
@@ -368,3 +368,20 @@ def test_a_busbar_without_a_source_fails_the_plain_load_flow(pair):
     row = retest.query("name == 'network.json'").iloc[0]
     assert (row["test"], row["verdict"]) == ("plain load flow", "fail")
     assert row["retest"] > 0
+
+
+@pytest.mark.parametrize(
+    "column", ["r_pu", "x_pu", "g_pu", "b_pu", "ratio_pu", "shift_deg", "base_kv_to", "to_busbar"]
+)
+def test_an_edited_branch_table_fails_and_names_its_column(pair, column):
+    table = pd.read_csv(pair / "branches.csv", dtype={"name": str})
+    row = table.index[table["name"] == "bad"][0]
+    old = table.loc[row, column]
+    table.loc[row, column] = "Elsewhere" if isinstance(old, str) else old * (1 + 1e-6) + (old == 0)
+    table.to_csv(pair / "branches.csv", index=False)
+    retest, _, findings = prove(pair, edited=True)
+    failed = retest[(retest["verdict"] == "fail") & (retest["test"] == "branch table")]
+    assert set(failed["name"]) == {"bad"}
+    wanted = {"b_pu": "y_pu", "to_busbar": "base_kv_to"}.get(column, column)
+    assert wanted in set(failed["quantity"])
+    assert "bad" in {finding.subject for finding in findings}

@@ -158,7 +158,7 @@ def test_many_units_left_out_are_counted_rather_than_listed():
 
 def test_a_proof_that_holds_passes():
     text = " ".join(verdict_line(retest("pass", "pass"), regulation()).split())
-    assert text.startswith("Proof PASS: 2 of 2 readings agree, worst difference 2.0e-12 %")
+    assert text.startswith("Proof PASS: 2 of 2 checks agree, worst difference 2.0e-12 %")
     assert "6 of 6 regulation points" in text
     assert "phasor 50 %" in text
 

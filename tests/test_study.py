@@ -37,7 +37,8 @@ COLUMNS = {
 #: units.csv is described in words: what each unit, stage and state must say
 UNIT_COLUMNS = (
     "name stage state rated_mva winding_temp_degc uk_percent ur_percent ux_percent i0_percent "
-    "p0_w pk_w r_pu x_pu g_pu b_pu x_over_r rated_amps_hv rated_amps_lv"
+    "p0_w pk_w ohmic_hv_w ohmic_lv_w stray_w k_hv_degc k_lv_degc k_stray_degc r_own_pu "
+    "x_own_pu g_own_pu b_own_pu x_over_r rated_amps_hv rated_amps_lv"
 )
 #: 3.1 kW read at √3·15.42 V·100 A = 2.7 kVA; and a certificate without a short-circuit test
 IMPOSSIBLE = UNITS["Opposite"].replace("501 A", "100 A")

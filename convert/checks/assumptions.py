@@ -10,7 +10,7 @@ import numpy as np
 
 from .. import circuit
 from ..errors import Finding, Severity
-from ..gates import at_limit, at_unit, each, needs_temperature, place, printed, separable
+from ..gates import at_unit, each, needs_temperature, place, printed, separable
 from ..plant import Plant, Status, Table
 from ..quantity import show
 from ..standards import COMMON_PRACTICE, STANDARDS, winding_constant
@@ -153,12 +153,13 @@ def _facts(units: Table) -> Iterator[Finding]:
     def unity(row: int) -> Finding:
         return Finding(
             Severity.CAUTION, "", "no-load-power-factor-one", place(units, "oc_watts", row),
-            f"cosφ = {units['oc_cosphi'][row]:.5g}, above 1 by less than the printed digits",
-            "i0 above P0/S", "b = 0 and i0 = P0/S are assumed: no magnetising branch",
+            f"cosφ = {units['oc_cosphi'][row]:.5g}: i0 not above P0/S within the printed digits",
+            "i0 above P0/S",
+            "i0 is assumed to be the least that goes with P0: no magnetising branch",
             "i0 or P0 rounded, or i0 filled in from P0", COMMON_PRACTICE,
         )  # fmt: skip
 
-    yield from each(units, at_limit(units), unity)
+    yield from each(units, units["no_magnetising"] == 1, unity)
 
 
 def _no_load_volts(units: Table) -> Iterator[Finding]:

@@ -218,6 +218,8 @@ def _unknown(document: Document, place: Place, error: Any) -> None:
         if key not in words:
             near = get_close_matches(key, words, 1, 0.6)
             mend = f"did you mean {near[0]}?" if near else ""
+            if key[:1].isdigit():
+                mend = "a decimal comma inside { } ends the value: write a decimal point"
             expected = "one of " + ", ".join(words)
             document.report((*place, key), f"the unknown key {_short(key)!r}", expected, mend)
 

@@ -31,9 +31,3 @@ def volts_of_share(share: Any, u_r: Any) -> Any:
 def amps_of_share(share: Any, i_r: Any) -> Any:
     """Amps [A] that a stated share of the rated current [pu] is."""
     return share * i_r
-
-
-@source("power in an alternating-current circuit", "cosφ = 1", "from memory")
-def amps_of_watts(p: Any, u: Any, phases: Any) -> Any:
-    """Least amps [A] that carry watts `p` at volts `u`: the reading at a power factor of one."""
-    return p / (sqrt(phases) * u)

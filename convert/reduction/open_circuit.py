@@ -9,7 +9,7 @@ from numpy import sqrt
 from ..standards import source
 
 
-@source("IEC 60076-1:2011", "3.8.9", "from memory")
+@source("IEC 60076-1:2011", "rated current", "from memory")
 def rated_current(s: Any, u: Any, phases: Any) -> Any:
     """Rated current of one side.
 
@@ -48,7 +48,7 @@ def no_load_current_at_rated_volts(i: Any, u: Any, u_r: Any) -> Any:
     return i * (u_r / u)
 
 
-@source("IEC 60076-1:2011", "3.6.3 (i0 in per unit of the rated current)", "from memory")
+@source("IEC 60076-1:2011", "no-load current in per unit of the rated current", "from memory")
 def no_load_current_per_unit(i_0: Any, i_r: Any) -> Any:
     """No-load current at rated volts on the fed side's rated current [pu]."""
     return i_0 / i_r
@@ -58,6 +58,12 @@ def no_load_current_per_unit(i_0: Any, i_r: Any) -> Any:
 def shunt_conductance(p_0: Any, s: Any) -> Any:
     """Conductance seen in the open-circuit test [pu, own base] from P0 [W] and power [VA]."""
     return p_0 / s
+
+
+@source("two-port theory", "no-load current without magnetising branch", "derived here")
+def least_no_load_current(g: Any, x: Any) -> Any:
+    """Least no-load current [pu] that goes with `g`: the core's loss behind half of `x`."""
+    return g * sqrt(1 + (x * g / 2) ** 2)
 
 
 @source("IEC 60076-8:1997", "shunt branch: b = -sqrt(i0² - g²)", "from memory")

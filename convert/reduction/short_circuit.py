@@ -21,7 +21,7 @@ def impedance_volts_at_rated_current(u: Any, i: Any, i_r: Any) -> Any:
     return u * (i_r / i)
 
 
-@source("IEC 60076-1:2011", "3.7.1 (uk in per unit of the rated volts)", "from memory")
+@source("IEC 60076-1:2011", "short-circuit impedance in per unit of the rated volts", "from memory")
 def impedance_voltage(u_k: Any, u_r: Any) -> Any:
     """Short-circuit impedance |z| [pu, own base] from the impedance volts and rated volts [V]."""
     return u_k / u_r
