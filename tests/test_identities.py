@@ -441,6 +441,19 @@ def test_three_readings_that_differ_as_readings_do_are_not_spoken_of(
     assert rules(findings(tmp_path, sheet(unit((old, new), resistance=True)))) == set()
 
 
+# --- parallel units -----------------------------------------------------------------------------
+
+
+def test_unlike_clocks_between_the_same_busbars_are_a_caution_for_each_unit(tmp_path: Path):
+    other = ("vector_group: YNd11", "vector_group: YNd1")
+    text = sheet(unit(), unit(other, name="T2"))
+    found = [f for f in findings(tmp_path, text) if f.rule == "unlike-clocks"]
+    assert [finding.subject for finding in found] == ["T1", "T2"]
+    assert "1, 11" in found[0].found
+    assert stands_at(found[1], text, "vector_group: YNd1\n")
+    assert "unlike-clocks" not in rules(findings(tmp_path, sheet(unit(), unit(name="T2"))))
+
+
 # --- order --------------------------------------------------------------------------------------
 
 

@@ -1,6 +1,7 @@
 """The proof is no mirror: it passes what build wrote, and names the unit of every edited row."""
 
 import json
+import re
 import shutil
 from collections.abc import Callable
 from pathlib import Path
@@ -9,7 +10,7 @@ from types import SimpleNamespace
 import numpy as np
 import pandas as pd
 import pytest
-from test_entries import UNITS, plant
+from test_entries import HEAD, UNITS, plant
 
 from convert import BranchwrightError, build, prove
 from convert.proof import summary
@@ -385,3 +386,28 @@ def test_an_edited_branch_table_fails_and_names_its_column(pair, column):
     wanted = {"b_pu": "y_pu", "to_busbar": "base_kv_to"}.get(column, column)
     assert wanted in set(failed["quantity"])
     assert "bad" in {finding.subject for finding in findings}
+
+
+def test_the_shift_of_every_group_and_clock_is_proven_by_a_load_flow(tmp_path):
+    """Five connections a side and every hour that they can make."""
+    groups = []
+    for hv in ("D", "Y", "YN", "Z", "ZN"):
+        for lv in ("d", "y", "yn", "z", "zn"):
+            odd = (hv[0] in "DZ") != (lv[0] in "dz")
+            groups += [f"{hv}{lv}{clock}" for clock in range(int(odd), 12, 2)]
+    lv = re.search(r"lv: {busbar: ([^,]+),", UNITS["Given"])[1]
+    units, busbars = {}, []
+    for name in groups:  # a busbar each: unlike clocks in parallel would be a short circuit
+        block = UNITS["Given"].replace("vector_group: Yyn0", f"vector_group: {name}")
+        units[name] = block.replace(lv, f"Bus {name}")
+        busbars.append(f"  Bus {name}: {{nominal_voltage: 0.4 kV}}\n")
+    head = HEAD.replace("[50 %, 100 %]", "[100 %]").replace(', "1", 0.9 leading]', "]")
+    head = head.replace("transformers:\n", "".join(busbars) + "transformers:\n")
+    study = build(plant(tmp_path, units, head))
+    assert study.passed
+    angle = study.retest[study.retest["quantity"] == "lv angle"].set_index("name")["retest"]
+    assert len(angle) == len(groups) == 150
+    for name, found in angle.items():
+        clock = int(re.search(r"\d+$", name)[0])
+        # hours of the clock are 30° of lag; the no-load angle of the circuit is below 0.1°
+        assert abs((found + 30 * clock + 180) % 360 - 180) < 0.1

@@ -49,6 +49,7 @@ def rules(plant: Plant, units: Table) -> Iterator[Finding]:
     yield from _nominal(plant, units)
     yield from _stated(units)
     yield from _spread(units)
+    yield from _clocks(plant, units)
 
 
 def _stray(units: Table) -> Iterator[Finding]:
@@ -257,3 +258,27 @@ def _spread(units: Table) -> Iterator[Finding]:
             )  # fmt: skip
 
         yield from each(units, spread > SPREAD, fill)
+
+
+def _clocks(plant: Plant, units: Table) -> Iterator[Finding]:
+    """Units between the same two busbars whose low-voltage sides do not stand at one angle."""
+    hours: dict[tuple[float, float], set[int]] = {}
+    ends = list(zip(units["hv_bus"], units["lv_bus"], strict=True))
+    for pair, clock, phases in zip(ends, units["clock"], units["phases"], strict=True):
+        if phases == 3:
+            hours.setdefault(pair, set()).add(int(clock))
+    names = plant.busbars.text["name"]
+
+    def fill(row: int) -> Finding:
+        hv, lv = (names[int(bus)] for bus in ends[row])
+        return Finding(
+            Severity.CAUTION, "", "unlike-clocks", place(units, "vector_group", row),
+            f"{printed(units, 'vector_group', row=row)} between {hv} and {lv}, where the clocks "
+            f"are {', '.join(map(str, sorted(hours[ends[row]])))}", "one clock number",
+            "in parallel they short-circuit each other: the network as a whole cannot be run",
+            "the wrong busbar, or a vector group mistyped", COMMON_PRACTICE,
+        )  # fmt: skip
+
+    three = units["phases"] == 3
+    unlike = np.array([len(hours.get(pair, ())) > 1 for pair in ends], dtype=np.bool_)
+    yield from each(units, three & unlike, fill)
