@@ -11,7 +11,7 @@ from typing import Any
 
 import pandas as pd
 
-from . import proof
+from . import filecheck, proof
 from .errors import Finding, Severity
 from .study import CAUTION, Study, error_line
 
@@ -71,7 +71,7 @@ def _retest_lines(retest: pd.DataFrame) -> Iterator[str]:
     flows = retest["unit"] == "count"
     shown = retest["name"].isin(_first(retest["name"])) | (retest["verdict"] == "fail")
     # what drives a test, and the branch table, are shown where they fail
-    given = retest["quantity"].str.endswith("applied") | (retest["test"] == proof.BRANCH_TABLE)
+    given = retest["quantity"].str.endswith("applied") | (retest["test"] == filecheck.BRANCH_TABLE)
     given &= retest["verdict"] == "pass"
     listed = _rows(retest[shown & ~flows & ~given])
     head, *body = grid(
@@ -134,8 +134,8 @@ def verdict_line(retest: pd.DataFrame, regulation: pd.DataFrame) -> str:
     verdict = "PASS" if (read, held) == (reads, points) else "FAIL"
     return _wrap(
         f"Proof {verdict}: {read} of {reads} checks agree, worst difference "
-        f"{worst['retest_worst_percent']:.1e} % (limit {100 * proof.TOLERANCE:.0e} %); {held} of "
-        f"{points} regulation points within their bound (largest use: {use})."
+        f"{worst['retest_worst_percent']:.1e} % (limit {100 * filecheck.TOLERANCE:.0e} %); "
+        f"{held} of {points} regulation points within their bound (largest use: {use})."
     )
 
 

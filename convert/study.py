@@ -15,7 +15,7 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from . import chain, checks, entries, expectation, folder, proof, unitsheet
+from . import chain, checks, entries, expectation, filecheck, folder, proof, unitsheet
 from .errors import BranchwrightError, Finding, Severity
 from .plant import Plant, Table
 from .quantity import show
@@ -403,7 +403,7 @@ def prove(
         listed = ", ".join(sorted(map(str, lacking)))
         raise BranchwrightError([f"{target}: no expected readings or regulation of {listed}"])
     expected = retest[[*proof.KEYS, "unit", "certificate", "correction", "expected"]]
-    made_here = (expected["unit"] == "count") | (expected["test"] == proof.BRANCH_TABLE)
+    made_here = (expected["unit"] == "count") | (expected["test"] == filecheck.BRANCH_TABLE)
     expected = expected[~made_here].reset_index(drop=True)
     points = regulation.drop(columns=["flow_percent", "difference_points", "verdict"])
     return proof.prove(target, branches, units, expected, points, progress)

@@ -27,6 +27,7 @@ ORDER = (
     ("study",),
     ("basechange",),
     ("proof",),
+    ("filecheck",),
     ("flow",),
     ("folder",),
     ("checks",),
@@ -56,7 +57,7 @@ HEAVY = {
     "yaml": ({"intake/document.py"}, False),
     "jsonschema": ({"intake/document.py"}, True),
 }
-PANDAS_ROOMS = {"report", "study", "basechange", "proof", "flow", "folder"}
+PANDAS_ROOMS = {"report", "study", "basechange", "proof", "filecheck", "flow", "folder"}
 PRINTING = {"print", "pprint"}
 STREAMS = {"sys.stdout", "sys.stderr"}
 FORMULA_CALLS = {"sqrt", "abs", "hypot"}
