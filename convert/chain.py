@@ -117,6 +117,10 @@ def carry_to_temperatures(units: Table) -> None:
         units.put(f"pk_{state}", temperature.load_loss, p_hv=f"p_hv_{state}",
                   p_lv=f"p_lv_{state}", p_stray=f"p_stray_{state}")  # fmt: skip
         units.overwrite(f"pk_{state}", "pk_tested", same)
+        # a loss that is not carried still rests on both temperatures being what they are said to be
+        rests_on = units.worst((f"pk_{state}", "t_tested", t_new))
+        units.status[f"pk_{state}"] = np.where(units.has(f"pk_{state}"), rests_on, Status.ABSENT)
+        units.status[f"pk_{state}"] = units.status[f"pk_{state}"].astype(np.uint8)
         units.put(f"r_{state}", short_circuit.series_resistance, p_k=f"pk_{state}", s="s")
     for state in STATES:
         units.put(f"z_sc_{state}", short_circuit.impedance, r=f"r_{state}", x="x")

@@ -37,7 +37,7 @@ def branch_table(plant: Plant, units: Table, model: str) -> Columns:
     ideal transformer `ratio_pu`·exp(j `shift_deg`), on (`base_mva`, `base_kv_to`).
     """
     names = plant.busbars.text["name"]
-    worst = units.worst(("z_sc_study", "y_oc"))
+    worst = units.worst(("z_sc_study", "y_oc", "r_share_from"))
     n = units.n
     return {
         "name": units.text["name"],
