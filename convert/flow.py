@@ -129,7 +129,7 @@ def solve(
     angles : bool
         Whether the transformers' phase shift is solved for.
     near_rated : bool
-        Refuse volts outside 0.5 to 1.5 per unit: the library knows false solutions there.
+        Refuse volts outside 0.5 to 1.5 of the source's: the library knows false solutions there.
 
     Returns
     -------
@@ -182,7 +182,8 @@ def _solve_chunk(
     vm = net.res_bus["vm_pu"].to_numpy().reshape(2, n).T
     good = _balanced(net, n, power)
     if near_rated:
-        good &= ((vm > 0.5) & (vm < 1.5)).all(axis=1)
+        share = vm / np.nanmax(source, axis=1)[:, None]
+        good &= ((share > 0.5) & (share < 1.5)).all(axis=1)
     done = at[good]
     out.why[at] = "volts or powers that do not fit: no true solution"
     out.why[done] = ""
